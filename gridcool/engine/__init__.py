@@ -1,0 +1,1 @@
+"""Engine: the energy account and the orientation search for whole grids."""

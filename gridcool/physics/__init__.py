@@ -1,0 +1,1 @@
+"""Physics: pure NumPy kernels; no files, no labels, no settings."""

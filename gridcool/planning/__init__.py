@@ -1,0 +1,1 @@
+"""Planning: what a planner decides from: regions and ranks."""

@@ -1,0 +1,1 @@
+"""Products: layers and tables as files."""

@@ -1,0 +1,1 @@
+"""Release: publishing a finished product as a whole."""

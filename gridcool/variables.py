@@ -1,0 +1,99 @@
+"""The declared table of inputs and layers, read from ``variables.toml``."""
+
+from __future__ import annotations
+
+import tomllib
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cache
+from importlib.resources import files
+from types import MappingProxyType
+from typing import Any, Literal
+
+
+@dataclass(frozen=True)
+class Flag:
+    """One bit of a flag layer: its value, its CF meaning (one word) and a sentence for people."""
+
+    value: int
+    meaning: str
+    description: str
+
+
+@dataclass(frozen=True)
+class InputVariable:
+    """What is known of one input.
+
+    ``units`` are those used inside; ``difference`` marks a temperature difference, which changes
+    scale but not origin when converted; ``valid`` bounds what is possible, ``usual`` what is
+    common; ``names`` are the variable's usual names inside files.
+    """
+
+    name: str
+    standard_name: str
+    long_name: str
+    units: str
+    time: Literal["month", "none"]
+    valid: tuple[float, float]
+    usual: tuple[float, float]
+    names: tuple[str, ...]
+    difference: bool = False
+
+
+@dataclass(frozen=True)
+class LayerVariable:
+    """What is declared of one output layer."""
+
+    name: str
+    standard_name: str
+    long_name: str
+    units: str
+    bands: Literal["year", "month"]
+    cell_methods: str
+    ramp: str
+    flags: tuple[Flag, ...] = ()
+
+    @property
+    def is_flags(self) -> bool:
+        """Whether the layer holds bits instead of a quantity."""
+        return bool(self.flags)
+
+
+@cache
+def _table() -> dict[str, dict[str, dict[str, Any]]]:
+    text = (files("gridcool") / "variables.toml").read_text(encoding="utf-8")
+    return tomllib.loads(text)
+
+
+@cache
+def input_variables() -> Mapping[str, InputVariable]:
+    """Every input that gridcool knows by name, in the order of the table."""
+    known = {}
+    for name, row in _table()["inputs"].items():
+        pairs = {key: tuple(row[key]) for key in ("valid", "usual", "names")}
+        known[name] = InputVariable(name=name, **{**row, **pairs})
+    return MappingProxyType(known)
+
+
+@cache
+def layer_variables() -> Mapping[str, LayerVariable]:
+    """Every layer that gridcool writes, in the order of the table."""
+    known = {}
+    for name, row in _table()["layers"].items():
+        flags = tuple(Flag(*flag) for flag in row.get("flags", ()))
+        known[name] = LayerVariable(name=name, **{**row, "flags": flags})
+    return MappingProxyType(known)
+
+
+def flag_value(layer: str, meaning: str) -> int:
+    """The bit of a flag layer that stands for ``meaning``.
+
+    Raises
+    ------
+    KeyError
+        If the layer has no such flag.
+    """
+    for flag in layer_variables()[layer].flags:
+        if flag.meaning == meaning:
+            return flag.value
+    raise KeyError(meaning)
