@@ -9,7 +9,8 @@ form turns negative beyond an air mass of about 35.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -50,6 +51,10 @@ class Atmosphere:
     precipitable_water_cm: ArrayLike = 1.5
     aerosol_depth: ArrayLike = 0.1
     ozone_cm: ArrayLike = DEFAULT_OZONE_CM
+
+    def at(self, index: Any) -> Atmosphere:
+        """The column with every field indexed alike; the fields must be arrays of one shape."""
+        return Atmosphere(*(np.asarray(getattr(self, field.name))[index] for field in fields(self)))
 
 
 def pressure_ratio(elevation: ArrayLike) -> FloatArray:

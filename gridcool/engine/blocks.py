@@ -1,0 +1,189 @@
+"""The engine on labelled, lazy grids: strips of rows as dask tasks."""
+
+from __future__ import annotations
+
+from collections.abc import Hashable, Mapping
+from typing import Any
+
+import dask.array as da
+import numpy as np
+import xarray as xr
+from dask.delayed import delayed
+from numpy.typing import NDArray
+
+from gridcool.engine.clear_sky import COLUMN_INPUTS
+from gridcool.engine.columns import column_basis
+from gridcool.engine.options import Panel, Sky
+from gridcool.engine.orientations import compass, meridian
+from gridcool.engine.response import Response, path_integrals
+from gridcool.engine.strips import Plan, layer_bands, solve_strip
+from gridcool.errors import InputDataError
+from gridcool.variables import input_variables, layer_variables
+
+FloatArray = NDArray[np.floating]
+
+LATITUDE_STEP = 2.5  # degrees between nodes of the path integrals
+USED = ("albedo", "cloud_fraction", "temperature_range", "surface_shortwave", *COLUMN_INPUTS)
+
+
+def solve(dataset: xr.Dataset, panel: Panel | None = None, sky: Sky | None = None) -> xr.Dataset:
+    """Best orientation and energy account of every cell, lazily.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        Inputs under their canonical names and units, see ``variables.toml``; dimensions month,
+        latitude and longitude, with an hour dimension for a cloud fraction that has a diurnal
+        cycle (bins of local mean solar time, evenly spaced from midnight). Lazy or not; NaN where
+        missing. Any latitudes are welcome, evenly spaced or not.
+    panel : Panel
+    sky : Sky
+
+    Returns
+    -------
+    xarray.Dataset
+        The layers declared in ``variables.toml`` on the same grid, as dask arrays cut into strips
+        of rows like the albedo's chunks.
+
+    Raises
+    ------
+    InputDataError
+        At once if dimensions do not fit; on computing if a value is impossible.
+    """
+    panel, sky = panel or Panel(), sky or Sky()
+    _check_shape(dataset)
+    cloud = dataset.get("cloud_fraction")
+    hours = int(cloud.sizes.get("hour", 1)) if cloud is not None else 1
+    varying = tuple(prop for name, (prop, _) in COLUMN_INPUTS.items() if name in dataset)
+    plan = Plan(
+        panel=panel,
+        sky=sky,
+        basis=column_basis(varying),
+        orientations=compass() if hours > 1 else meridian(),
+        hours=hours,
+    )
+    stack = _solve_lazily(dataset, plan)
+    return _label(stack, dataset)
+
+
+def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:
+    names = [name for name in USED if name in dataset]
+    arrays = {name: _strips(dataset, name) for name in names}
+    latitudes = np.asarray(dataset["latitude"].values, float)
+    columns = dataset.sizes["longitude"]
+    bands = list(layer_bands().values())[-1].stop
+    integrals = delayed(path_integrals, pure=True)
+    plan_once = delayed(plan, traverse=False)
+    nodes: dict[int, Any] = {}
+    pieces, start = [], 0
+    solver = delayed(_solve_block, pure=True)
+    for index, rows in enumerate(arrays["albedo"].chunks[-2]):
+        strip = latitudes[start : start + rows]
+        needed = sorted({int(n) for row in strip for n in latitude_stencil(row)[0]})
+        for node in needed:
+            if node not in nodes:
+                nodes[node] = integrals(
+                    -90 + node * LATITUDE_STEP, plan.basis, plan.orientations, plan.hours
+                )
+        block = {name: array.blocks[..., index, 0] for name, array in arrays.items()}
+        lazy = solver(plan_once, block, strip, {node: nodes[node] for node in needed})
+        pieces.append(da.from_delayed(lazy, (bands, rows, columns), np.float32))
+        start += rows
+    stack: da.Array = da.concatenate(pieces, axis=1)
+    return stack
+
+
+def latitude_stencil(latitude: float) -> tuple[NDArray[np.intp], FloatArray]:
+    """Four nodes around a latitude (degrees) and the weights of cubic interpolation."""
+    last = round(180 / LATITUDE_STEP)
+    position = (latitude + 90) / LATITUDE_STEP
+    first = int(np.clip(np.floor(position) - 1, 0, last - 3))
+    nodes = np.arange(first, first + 4)
+    weights = [
+        np.prod([(position - other) / (node - other) for other in nodes if other != node])
+        for node in nodes
+    ]
+    return nodes, np.asarray(weights)
+
+
+def _solve_block(
+    plan: Plan,
+    inputs: Mapping[str, FloatArray],
+    latitudes: FloatArray,
+    nodes: Mapping[int, Response],
+) -> FloatArray:
+    for name, values in inputs.items():
+        _check_range(name, values, latitudes)
+    responses = []
+    for latitude in latitudes:
+        index, weights = latitude_stencil(float(latitude))
+        responses.append(Response.blend([nodes[int(i)] for i in index], weights))
+    return solve_strip(plan, inputs, latitudes, responses)
+
+
+def _check_range(name: str, values: FloatArray, latitudes: FloatArray) -> None:
+    low, high = input_variables()[name].valid
+    finite = np.isfinite(values)
+    if (finite & ((values < low - 1e-6) | (values > high + 1e-6))).any():
+        raise InputDataError(
+            f"{name} holds values outside {low:g} to {high:g} {input_variables()[name].units} "
+            f"between latitudes {latitudes.min():g} and {latitudes.max():g}; "
+            "check its units and fill value."
+        )
+
+
+def _check_shape(dataset: xr.Dataset) -> None:
+    if "albedo" not in dataset:
+        raise InputDataError("The dataset has no variable albedo; add it under that name.")
+    for name in USED:
+        if name not in dataset:
+            continue
+        dims: set[Hashable] = set(dataset[name].dims)
+        wanted = {"latitude", "longitude"} | (set() if name == "elevation" else {"month"})
+        if dims - {"hour"} != wanted or ("hour" in dims and name != "cloud_fraction"):
+            raise InputDataError(
+                f"{name} has dimensions {sorted(map(str, dims))}; {sorted(wanted)} are needed."
+            )
+    if dataset.sizes["month"] != 12:
+        raise InputDataError(f"The dataset has {dataset.sizes['month']} months; 12 are needed.")
+
+
+def _strips(dataset: xr.Dataset, name: str) -> da.Array:
+    """The variable as a float32 dask array in whole-width strips, months first."""
+    order = [d for d in ("month", "hour", "latitude", "longitude") if d in dataset[name].dims]
+    variable = dataset[name].transpose(*order)
+    array = variable.data
+    if not isinstance(array, da.Array):
+        array = da.from_array(np.asarray(array, np.float32), chunks=array.shape)
+    albedo = dataset["albedo"]
+    rows = albedo.chunksizes.get("latitude", (dataset.sizes["latitude"],))
+    whole = dict.fromkeys(range(array.ndim), -1)
+    strips: da.Array = array.astype(np.float32).rechunk({**whole, array.ndim - 2: rows})
+    return strips
+
+
+def _label(stack: da.Array, dataset: xr.Dataset) -> xr.Dataset:
+    coordinates = {
+        "month": np.arange(1, 13),
+        "latitude": dataset["latitude"],
+        "longitude": dataset["longitude"],
+    }
+    layers = {}
+    for name, layer in layer_variables().items():
+        band = layer_bands()[name]
+        if layer.bands == "month":
+            dims: tuple[str, ...] = ("month", "latitude", "longitude")
+            values = stack[band]
+        else:
+            dims = ("latitude", "longitude")
+            values = stack[band.start]
+        if layer.is_flags:
+            values = values.astype(np.uint16)
+        attributes = {
+            "standard_name": layer.standard_name,
+            "long_name": layer.long_name,
+            "units": layer.units,
+            "cell_methods": layer.cell_methods,
+        }
+        layers[name] = (dims, values, {k: v for k, v in attributes.items() if v})
+    return xr.Dataset(layers, coords=coordinates)

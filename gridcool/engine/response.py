@@ -1,0 +1,196 @@
+"""Path integrals: what a panel of every orientation meets along the sun's path.
+
+The account is linear in a few numbers of the cell once these are known, see `optimum`. They depend
+on latitude, month, hour bin, column and orientation alone.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.polynomial.legendre import leggauss
+from numpy.typing import NDArray
+
+from gridcool.engine.columns import ColumnBasis
+from gridcool.engine.orientations import Orientations
+from gridcool.physics import atmosphere, panel, sun
+from gridcool.physics.atmosphere import Atmosphere
+
+FloatArray = NDArray[np.floating]
+
+DAYS_PER_MONTH = 5
+NODES_PER_HALF_DAY = 32
+NODES_PER_DAY_IN_BINS = 72
+TERMS = 5
+_PATH_TABLE = np.exp(np.linspace(0.0, np.log(80.0), 3000)) * 0.999
+
+
+@dataclass(frozen=True)
+class Response:
+    """Path integrals at one latitude, float32, W m-2 as means over all hours of the month.
+
+    Attributes
+    ----------
+    panel : array, shape (12, hours, rank, 5, orientations)
+        ⟨B₀ f T⟩ and ⟨B₀ f R⟩ of rays that leave upward, ⟨B₀ f⟩ upward, ⟨B₀ f⟩ downward, ⟨B₀ b⟩,
+        with f and b the cosines of incidence on front and back.
+    beam, scattered : array, shape (12, hours, rank)
+        ⟨B₀ μ⟩ and ⟨I_as⟩ on the horizontal, before bounces.
+    extraterrestrial : array, shape (12,)
+        R_a, irradiance of the horizontal above the atmosphere.
+    """
+
+    panel: FloatArray
+    beam: FloatArray
+    scattered: FloatArray
+    extraterrestrial: FloatArray
+
+    @staticmethod
+    def blend(responses: list[Response], weights: FloatArray) -> Response:
+        """Weighted sum of responses, for interpolation in latitude."""
+
+        def total(name: str) -> FloatArray:
+            pairs = zip(responses, np.asarray(weights, np.float32), strict=True)
+            return np.asarray(sum(getattr(each, name) * weight for each, weight in pairs))
+
+        return Response(
+            total("panel"),
+            np.maximum(total("beam"), 0),
+            np.maximum(total("scattered"), 0),
+            np.maximum(total("extraterrestrial"), 0),
+        )
+
+
+def path_integrals(
+    latitude: float, basis: ColumnBasis, orientations: Orientations, hours: int
+) -> Response:
+    """Integrate over the sun's path at one latitude.
+
+    Parameters
+    ----------
+    latitude : float
+        Degrees.
+    basis : ColumnBasis
+        The columns to integrate through.
+    orientations : Orientations
+        On the meridian only when ``hours`` is 1, since then half the day stands for the whole.
+    hours : int
+        Number of equal bins of local solar time from midnight; 1 for no diurnal cycle.
+    """
+    phi = float(np.deg2rad(latitude))
+    column = basis.atmosphere_at(phi)
+    normal = panel.normal_vector(
+        tilt=np.deg2rad(orientations.tilt), azimuth=np.deg2rad(orientations.azimuth)
+    )
+    whole_day = hours > 1 or not orientations.on_meridian
+    months = [_month(phi, month, column, normal, hours, whole_day) for month in range(12)]
+    parts = [np.stack([m[i] for m in months]).astype(np.float32) for i in range(4)]
+    return Response(*parts)
+
+
+def _month(
+    phi: float,
+    month: int,
+    column: Atmosphere,
+    normal: panel.Vector,
+    hours: int,
+    whole_day: bool,
+) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+    days, day_weights = _month_days(month)
+    delta = sun.declination(days)
+    irradiance = sun.TOTAL_SOLAR_IRRADIANCE * sun.distance_factor(days)
+    hour_angle, hour_weights = _hour_nodes(phi, delta, hours, whole_day)
+    weight = _by_bin(hour_weights * day_weights[:, None, None])
+    # From here on: (hours, days × nodes), so that a sum over the last axis is a bin's integral.
+    rays = sun.sun_vector(latitude=phi, declination=delta[:, None, None], hour_angle=hour_angle)
+    sun_rays = [_by_bin(ray) for ray in rays]
+    extraterrestrial = _by_bin(np.broadcast_to(irradiance[:, None, None], hour_angle.shape))
+    sine = np.maximum(sun_rays[2], 1e-6)
+    air_mass = sun.air_mass(sine)
+    beam, scattered = atmosphere.clear_sky(
+        column.at(np.s_[:, None, None]),
+        air_mass,
+        sine,
+        extraterrestrial,
+    )
+    beam_weight = np.moveaxis(beam * weight, 0, 1)  # (hours, rank, nodes)
+    panel_terms = np.stack(
+        [
+            _panel_terms(column, [r[h] for r in sun_rays], air_mass[h], beam_weight[h], normal)
+            for h in range(hours)
+        ]
+    )
+    horizontal = (beam_weight * sine[:, None, :]).sum(axis=-1)
+    diffuse = np.moveaxis((scattered * weight).sum(axis=-1), 0, 1)
+    top = (extraterrestrial * sine * weight).sum()
+    return panel_terms, horizontal, diffuse, np.asarray(top)
+
+
+def _panel_terms(
+    column: Atmosphere,
+    sun_ray: list[FloatArray],
+    air_mass: FloatArray,
+    beam_weight: FloatArray,
+    normal: panel.Vector,
+) -> FloatArray:
+    """The five integrals of one hour bin, shape (rank, 5, orientations)."""
+    cosine = panel.cosine_of_incidence(
+        (sun_ray[0][:, None], sun_ray[1][:, None], sun_ray[2][:, None]), normal
+    )
+    rank = len(beam_weight)
+    front, back = np.maximum(cosine, 0), np.maximum(-cosine, 0)
+    rising = 2 * cosine * normal[2] - sun_ray[2][:, None]
+    upward = (rising > 0) & (cosine > 0)
+    front_up = np.where(upward, front, 0.0)
+    path_up = np.log(sun.air_mass(np.where(upward, rising, 1.0)))
+    path_both = np.log(air_mass[:, None] + np.exp(path_up))
+    table = np.log(_PATH_TABLE)
+    terms = np.empty((rank, TERMS, cosine.shape[1]))
+    terms[:, 2] = beam_weight @ front_up
+    terms[:, 3] = beam_weight @ (front - front_up)
+    terms[:, 4] = beam_weight @ back
+    for k in range(rank):
+        one = column.at(k)
+        absorbed = atmosphere.absorption_transmittance(one, _PATH_TABLE)
+        unscattered, forward = atmosphere.scattering_transmittance(one, _PATH_TABLE)
+        passed = np.interp(path_both, table, absorbed) * front_up
+        sent_back = passed * np.interp(path_up, table, (1 - forward) * (1 - unscattered))
+        weight = beam_weight[k] / atmosphere.absorption_transmittance(one, air_mass)
+        total = weight @ passed
+        terms[k, 1] = weight @ sent_back
+        terms[k, 0] = total - terms[k, 1]
+    return terms
+
+
+def _month_days(month: int) -> tuple[FloatArray, FloatArray]:
+    """Gauss–Legendre days of a month and their weights, which add up to one."""
+    start = sum(sun.MONTH_LENGTHS[:month]) + 0.5
+    x, w = leggauss(DAYS_PER_MONTH)
+    return start + sun.MONTH_LENGTHS[month] * (x + 1) / 2, w / 2
+
+
+def _hour_nodes(
+    phi: float, delta: FloatArray, hours: int, whole_day: bool
+) -> tuple[FloatArray, FloatArray]:
+    """Hour angles within daylight and weights of a 24-hour mean, shape (days, hours, nodes)."""
+    sunset = sun.sunset_hour_angle(latitude=phi, declination=delta)[:, None]
+    if whole_day:
+        edges = np.linspace(-np.pi, np.pi, hours + 1)
+        nodes = max(4, NODES_PER_DAY_IN_BINS // hours)
+        low = np.asarray(np.clip(edges[:-1], -sunset, sunset))
+        high = np.asarray(np.clip(edges[1:], -sunset, sunset))
+        mirrored = 1.0
+    else:
+        nodes = NODES_PER_HALF_DAY
+        low, high = np.zeros_like(sunset), np.asarray(sunset)
+        mirrored = 2.0
+    x, w = leggauss(nodes)
+    half = (high - low)[..., None] / 2
+    angle = (high + low)[..., None] / 2 + half * x
+    return angle, mirrored * half * w / (2 * np.pi)
+
+
+def _by_bin(values: FloatArray) -> FloatArray:
+    """(days, hours, nodes) to (hours, days × nodes)."""
+    return np.moveaxis(values, 1, 0).reshape(values.shape[1], -1)
