@@ -9,6 +9,7 @@ same of overcast. Arrays are float32; months that do not count are zeroed by `Ce
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -48,22 +49,22 @@ class Cells:
     counts: FloatArray
     overcast_reflectance: float
 
-    @property
+    @cached_property
     def irradiance(self) -> FloatArray:
         """E[G], all-sky irradiance of the ground, shape (12, cells)."""
         return np.asarray((self.moments.whole * self.clear).sum(axis=1))
 
-    @property
+    @cached_property
     def diffuse(self) -> FloatArray:
         """E[D], shape (12, cells)."""
         return np.asarray(self.irradiance - (self.moments.beam * self.clear_beam).sum(axis=1))
 
-    @property
+    @cached_property
     def global_escape(self) -> FloatArray:
         """E[G E_d], shape (12, cells)."""
         return np.asarray(self.escape * (self.moments.ground_whole * self.clear).sum(axis=1))
 
-    @property
+    @cached_property
     def diffuse_escape(self) -> FloatArray:
         """E[D E_d], shape (12, cells)."""
         beam = self.escape * (self.moments.ground_beam * self.clear_beam).sum(axis=1)
@@ -119,14 +120,31 @@ def beam_coefficients(cells: Cells, panel: Panel) -> FloatArray:
     return np.stack(terms, axis=2)
 
 
-def diffuse_coefficients(cells: Cells, panel: Panel) -> FloatArray:
-    """Coefficients of 1, cos β and cos² β in the diffuse part of F, shape (3, 12, cells)."""
-    escaping, forgone, _ = _diffuse_parts(cells, panel)
-    return np.asarray((escaping - forgone) * cells.counts)
+@dataclass(frozen=True)
+class DiffuseParts:
+    """The sky's own light as coefficients of 1, cos β and cos² β, each of shape (12, cells).
+
+    ``escaping``, ``forgone`` and ``reflected`` as in `Outcome`, before `Cells.counts`.
+    """
+
+    escaping: tuple[FloatArray, ...]
+    forgone: tuple[FloatArray, ...]
+    reflected: tuple[FloatArray, ...]
+
+    def annual(self, month_weights: FloatArray) -> FloatArray:
+        """Coefficients of F, weighted by month and cell, shape (3, cells)."""
+        parts = [(parts * month_weights).sum(axis=0) for parts in self.escaping]
+        for power, part in enumerate(self.forgone):
+            parts[power] = parts[power] - (part * month_weights).sum(axis=0)
+        return np.stack(parts)
 
 
 def outcome(
-    cells: Cells, panel: Panel, integrals: FloatArray, cosine_of_tilt: FloatArray
+    cells: Cells,
+    panel: Panel,
+    integrals: FloatArray,
+    diffuse: DiffuseParts,
+    cosine_of_tilt: FloatArray,
 ) -> Outcome:
     """Follow the light at one orientation of each cell.
 
@@ -136,6 +154,7 @@ def outcome(
     panel : Panel
     integrals : array, shape (12, hours, 5, cells)
         Path integrals at the cell's orientation, as in `Response.panel`.
+    diffuse : DiffuseParts
     cosine_of_tilt : array, shape (cells,)
         cos β.
     """
@@ -156,42 +175,38 @@ def outcome(
     beam_escaping = rho * (sigma * specular + (1 - sigma) * matte).sum(axis=1)
     kept = front + np.float32(1 - panel.back_reflectance) * behind
     beam_forgone = (ground * m.ground_beam * kept).sum(axis=1)
-    powers = np.stack([np.ones_like(cosine_of_tilt), cosine_of_tilt, cosine_of_tilt**2])
-    parts = [(part * powers[:, None]).sum(axis=0) for part in _diffuse_parts(cells, panel)]
     beam_reflected = rho * (m.beam * front).sum(axis=1)
     return Outcome(
-        escaping=(beam_escaping + parts[0]) * cells.counts,
-        forgone=(beam_forgone + parts[1]) * cells.counts,
-        reflected=(beam_reflected + parts[2]) * cells.counts,
+        escaping=(beam_escaping + _in_powers(diffuse.escaping, cosine_of_tilt)) * cells.counts,
+        forgone=(beam_forgone + _in_powers(diffuse.forgone, cosine_of_tilt)) * cells.counts,
+        reflected=(beam_reflected + _in_powers(diffuse.reflected, cosine_of_tilt)) * cells.counts,
     )
 
 
-def _diffuse_parts(cells: Cells, panel: Panel) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """What of the sky's light escapes by the panel, is forgone by the ground, is reflected.
-
-    Each as coefficients of 1, cos β and cos² β, shape (3, 12, cells).
-    """
+def diffuse_parts(cells: Cells, panel: Panel) -> DiffuseParts:
+    """What of the sky's light escapes by the panel, is forgone by the ground, is reflected."""
     albedo = cells.albedo
     sky, whole = cells.diffuse_escape, cells.global_escape
     rho, back = np.float32(panel.reflectance), np.float32(panel.back_reflectance)
     mirrored = rho * np.float32(panel.specular_share)
     matte = rho * np.float32(1 - panel.specular_share)
-    zero = np.zeros_like(sky)
-    escaping = np.stack(
-        [
-            sky * (mirrored * albedo / 2 + matte * (1 + albedo) / 4),
-            sky * (mirrored * (1 - albedo / 2) + matte / 2),
-            sky * matte * (1 - albedo) / 4,
-        ]
+    ground = sky * albedo
+    escaping: tuple[FloatArray, ...] = (
+        mirrored / 2 * ground + matte / 4 * (sky + ground),
+        mirrored * (sky - ground / 2) + matte / 2 * sky,
     )
+    if matte > 0:
+        escaping = (*escaping, matte / 4 * (sky - ground))
     # The face also catches light on its way from the ground: α G (1 − cos β)/2 (1 − ρ) E_d is lost.
-    caught = albedo * whole * (1 - rho) / 2
-    forgone = np.stack(
-        [
-            sky * albedo * (1 - back / 2) + caught,
-            sky * albedo * back / 2 - caught,
-            zero,
-        ]
-    )
-    seen = rho * cells.diffuse / 2
-    return escaping, forgone, np.stack([seen, seen, zero])
+    caught = (1 - rho) / 2 * albedo * whole
+    forgone = (ground * (1 - back / 2) + caught, back / 2 * ground - caught)
+    seen = rho / 2 * cells.diffuse
+    return DiffuseParts(escaping, forgone, (seen, seen))
+
+
+def _in_powers(parts: tuple[FloatArray, ...], cosine: FloatArray) -> FloatArray:
+    """Sum of parts times rising powers of cos β, by Horner's rule."""
+    total = parts[-1]
+    for part in parts[-2::-1]:
+        total = total * cosine + part
+    return total

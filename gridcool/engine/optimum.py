@@ -72,8 +72,8 @@ def annual_response(
     ----------
     beam : array, shape (rows, cells)
         Coefficients of the path integrals.
-    diffuse : array, shape (3, cells)
-        Coefficients of 1, cos β and cos² β.
+    diffuse : array, shape (2 or 3, cells)
+        Coefficients of 1, cos β and, for a partly matte panel, cos² β.
     response : array, shape (rows, orientations)
         Path integrals, already weighted by the months.
     orientations : Orientations
@@ -83,7 +83,7 @@ def annual_response(
     array, shape (cells, orientations), W m-2
     """
     cosine = np.cos(np.deg2rad(orientations.tilt)).astype(np.float32)
-    powers = np.stack([np.ones_like(cosine), cosine, cosine**2])
+    powers = np.stack([cosine**power for power in range(len(diffuse))])
     coefficients = np.concatenate([beam, diffuse.astype(np.float32)])
     return np.asarray(coefficients.T @ np.concatenate([response, powers]))
 

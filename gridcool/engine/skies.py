@@ -140,8 +140,7 @@ def sky_table(sky: Sky) -> SkyTable:
 def _position(values: FloatArray, steps: int) -> tuple[NDArray[np.intp], FloatArray]:
     """Index of the step below and the way into it; NaN gets index 0 and a NaN way."""
     scaled = values * np.float32(steps)
-    with np.errstate(invalid="ignore"):
-        index = np.minimum(np.nan_to_num(scaled, nan=0.0), steps - 1).astype(np.intp)
+    index = np.fmin(np.fmax(scaled, 0), steps - 1).astype(np.intp)  # fmax turns NaN into 0
     return index, (scaled - index).astype(np.float32)
 
 

@@ -9,7 +9,7 @@ from functools import cache
 import numpy as np
 from numpy.typing import NDArray
 
-from gridcool.engine.account import Cells, beam_coefficients, diffuse_coefficients, outcome
+from gridcool.engine.account import Cells, beam_coefficients, diffuse_parts, outcome
 from gridcool.engine.clear_sky import COLUMN_INPUTS, ClearSky, clear_sky_of
 from gridcool.engine.columns import ColumnBasis
 from gridcool.engine.irradiance import (
@@ -212,14 +212,17 @@ def _layers(
     count = cells.albedo.shape[1]
     weights = clear_sky.weights.transpose(1, 0, 2)  # (months, rank, cells)
     beam = beam_coefficients(cells, plan.panel)[:, :, None] * weights[:, None, :, None]
-    diffuse = (diffuse_coefficients(cells, plan.panel) * _YEAR).sum(axis=1)
+    diffuse = diffuse_parts(cells, plan.panel)
     flux = annual_response(
-        beam.reshape(-1, count)[tables.sunlit], diffuse, tables.annual, plan.orientations
+        _rows(beam.reshape(-1, count), tables.sunlit),
+        diffuse.annual(cells.counts * _YEAR),
+        tables.annual,
+        plan.orientations,
     )
     best = find_best(flux, plan.orientations)
     integrals = best.interpolate(tables.monthly).reshape(12, plan.hours, -1, 5, count)
     integrals = (integrals * weights[:, None, :, None]).sum(axis=2)
-    result = outcome(cells, plan.panel, integrals, np.cos(np.deg2rad(best.tilt)))
+    result = outcome(cells, plan.panel, integrals, diffuse, np.cos(np.deg2rad(best.tilt)))
     annual, flat = (result.rejected * _YEAR).sum(axis=0), flux[:, plan.orientations.flat]
     reflected = (result.reflected * _YEAR).sum(axis=0)
     counts = reflected > 0
@@ -247,3 +250,7 @@ def _mean_cloud(plan: Plan, transmission: FloatArray, clear: FloatArray) -> Floa
 
 def _bit(mask: NDArray[np.bool_] | np.bool_, bit: int) -> NDArray[np.uint16]:
     return np.where(mask, np.uint16(bit), np.uint16(0))
+
+
+def _rows(matrix: FloatArray, keep: NDArray[np.bool_]) -> FloatArray:
+    return matrix if keep.all() else matrix[keep]

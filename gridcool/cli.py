@@ -1,0 +1,139 @@
+"""The command line: commands, exit codes, progress.
+
+The pipeline and its libraries are loaded only when a command needs them, so that ``--help`` answers
+at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+import importlib
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Any
+
+from gridcool import __version__
+from gridcool.errors import GridcoolError
+
+EXIT_CODES = """exit codes:
+  0  done, or nothing to do
+  1  a bug; please report it
+  2  wrong use or settings
+  3  an input is missing, broken or impossible
+  4  another run is active in the same output folder
+  5  the product could not be written
+"""
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command and return its exit code."""
+    options = _parser().parse_args(arguments)
+    try:
+        return int(options.command(options))
+    except GridcoolError as problem:
+        print(f"gridcool: {problem}", file=sys.stderr)
+        return problem.exit_code
+    except KeyboardInterrupt:
+        print("gridcool: stopped; the last release is untouched.", file=sys.stderr)
+        return 130
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="gridcool",
+        description="Where a ground-mounted reflective panel sends the most sunlight back out of "
+        "the atmosphere, and how to tilt it there.",
+        epilog=EXIT_CODES,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action="version", version=f"gridcool {__version__}")
+    commands = parser.add_subparsers(metavar="COMMAND", required=True)
+    check = commands.add_parser("check", help="open every input and print what was understood")
+    check.set_defaults(command=_check)
+    screen = commands.add_parser("screen", help="do the whole job and publish a release")
+    screen.set_defaults(command=_screen)
+    for command in (check, screen):
+        command.add_argument("settings", type=Path, help="settings file (TOML)")
+    screen.add_argument("--quiet", action="store_true", help="print the summary line only")
+    return parser
+
+
+def _pipeline() -> Any:
+    return importlib.import_module("gridcool.pipeline")
+
+
+def _settings(path: Path) -> Any:
+    return importlib.import_module("gridcool.config").load_settings(path)
+
+
+def _check(options: argparse.Namespace) -> int:
+    for line in _pipeline().check(_settings(options.settings)):
+        print(line)
+    return 0
+
+
+def _screen(options: argparse.Namespace) -> int:
+    settings = _settings(options.settings)
+    with _progress(quiet=options.quiet) as progress:
+        result = _pipeline().screen(settings, progress)
+    for line in result.summary(top=5):
+        print(line)
+    return 0
+
+
+class _Lines:
+    """Progress as plain lines on standard error, for logs and pipes."""
+
+    def __enter__(self) -> _Lines:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        return None
+
+    def stage(self, text: str) -> None:
+        print(f"gridcool: {text}", file=sys.stderr, flush=True)
+
+    def advance(self, done: int, total: int) -> None:
+        """Plain lines tell the stages only."""
+
+
+class _Silent(_Lines):
+    """No progress at all."""
+
+    def stage(self, text: str) -> None:
+        """Say nothing."""
+
+
+class _Bar(_Lines):
+    """A progress bar on a terminal."""
+
+    def __init__(self) -> None:
+        rich = importlib.import_module("rich.progress")
+        console = importlib.import_module("rich.console").Console(stderr=True)
+        self._bar = rich.Progress(console=console, transient=True)
+        self._task = self._bar.add_task("", total=None)
+
+    def __enter__(self) -> _Bar:
+        self._bar.start()
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self._bar.stop()
+
+    def stage(self, text: str) -> None:
+        self._bar.console.print(text, highlight=False)
+        self._bar.reset(self._task, description=text, total=None)
+
+    def advance(self, done: int, total: int) -> None:
+        self._bar.update(self._task, completed=done, total=total)
+
+
+def _progress(*, quiet: bool) -> _Lines:
+    if quiet:
+        return _Silent()
+    return _Bar() if sys.stderr.isatty() else _Lines()
+
+
+if __name__ == "__main__":
+    sys.exit(main())
