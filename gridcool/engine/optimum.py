@@ -40,8 +40,9 @@ class Best:
     @property
     def azimuth(self) -> FloatArray:
         """γ in degrees clockwise from north, NaN where the panel is flat."""
-        gamma = np.rad2deg(np.arctan2(self.east, self.north)) % 360.0
-        return np.where(self.tilt > 0, gamma, np.nan).astype(np.float32)
+        gamma = (np.rad2deg(np.arctan2(self.east, self.north)) % 360.0).astype(np.float32)
+        gamma = np.where(gamma >= 360, 0, gamma)  # what single precision rounds up to a full turn
+        return np.where(self.tilt > 0, gamma, np.float32(np.nan))
 
     def interpolate(self, table: FloatArray) -> FloatArray:
         """Values at the best orientation from a table over candidates.
