@@ -1,8 +1,9 @@
 """Carbon-dioxide equivalents of a reflected watt: two published views that must not be mixed.
 
 *Standing*: the carbon dioxide in today's air whose forcing equals the panel's for as long as the
-panel stands. *Over 100 years*: the emission pulse whose forcing, integrated over a century of decay,
-equals that of one year of the panel. Bright & Lund (2021), Atmos. Chem. Phys. 21, 9887, review both.
+panel stands. *Over 100 years*: the emission pulse whose forcing, integrated over a century of
+decay, equals that of one year of the panel. Bright & Lund (2021), Atmos. Chem. Phys. 21, 9887,
+review both.
 """
 
 from __future__ import annotations
@@ -64,7 +65,7 @@ def absolute_warming_potential(horizon: ArrayLike = 100.0) -> FloatArray:
 
 
 def standing_equivalent(flux: ArrayLike, concentration: float) -> FloatArray:
-    """Carbon dioxide in the air whose forcing equals the panel's while it stands, kg per m2 of panel.
+    """Carbon dioxide in the air whose forcing equals the standing panel's, kg per m2 of panel.
 
     The panel's forcing is its flux spread over the Earth; the slope of 5.35 ln(C/C₀) at today's
     concentration turns it into ppm and the mass of a ppm into kilograms.
