@@ -29,17 +29,15 @@ def on_meridian(signed: float) -> tuple[float, float]:
 
 
 def _best_on_meridian(scene: Scene, panel: Panel) -> Best:
+    """Coarse, then fine grid, then Brent: finite time steps make the curve a fine staircase."""
+
     def loss(signed: float) -> float:
         return -evaluate(scene, panel, *on_meridian(signed)).annual
 
-    tilts = np.arange(-84.0, 85.0, 6.0)
-    losses = np.array([loss(t) for t in tilts])
-    found = []
-    for start in tilts[np.argsort(losses)[:2]]:
-        bounds = (max(start - 6, -90.0), min(start + 6, 90.0))
-        result = minimize_scalar(loss, bounds=bounds, method="bounded", options={"xatol": 0.02})
-        found.append((float(result.fun), float(result.x)))
-    value, signed = min(found)
+    coarse = min(np.arange(-84.0, 85.0, 6.0), key=loss)
+    fine = min(np.arange(coarse - 6, coarse + 6.1, 0.75), key=loss)
+    result = minimize_scalar(loss, bounds=(fine - 1, fine + 1), method="bounded")
+    value, signed = min((float(result.fun), float(result.x)), (loss(fine), float(fine)))
     return Best(*on_meridian(signed), -value)
 
 
@@ -55,14 +53,19 @@ def _best_of_compass(scene: Scene, panel: Panel) -> Best:
 
     starts = [np.zeros(2)] + [
         np.sin(np.radians(tilt)) * np.array([np.sin(g), np.cos(g)])
-        for tilt in range(10, 81, 10)
+        for tilt in range(8, 81, 8)
         for g in np.radians(np.arange(0, 360, 30))
     ]
     losses = np.array([loss(start) for start in starts])
-    options = {"xatol": 2e-4, "fatol": 1e-5}
+    corners = 0.03 * np.array([[0.0, 1.0], [0.87, -0.5], [-0.87, -0.5]])
     results = [
-        minimize(loss, starts[i], method="Nelder-Mead", options=options)
-        for i in np.argsort(losses)[:2]
+        minimize(
+            loss,
+            starts[i],
+            method="Nelder-Mead",
+            options={"xatol": 2e-4, "fatol": 1e-5, "initial_simplex": starts[i] + corners},
+        )
+        for i in np.argsort(losses)[:3]
     ]
     best = min(results, key=lambda r: float(r.fun))
     return Best(*orientation(best.x), -float(best.fun))

@@ -5,7 +5,8 @@ engine has something independent to be wrong against. Every third day of the yea
 steps of solar time, months weighted by their lengths; the cloud distribution within a month is
 cut into narrow classes whose probabilities come from the incomplete beta function.
 
-Angles are degrees at the door and radians inside; vectors are (east, north, up).
+Angles are degrees at the door and radians inside; vectors are (east, north, up); hour bins start
+at solar midnight.
 """
 
 from __future__ import annotations
@@ -262,12 +263,12 @@ class Scene:
     sky: Sky = field(default_factory=Sky)
 
 
-def build_scene(cell: Cell, sky: Sky) -> Scene:
+def build_scene(cell: Cell, sky: Sky, *, steps_per_day: int = STEPS_PER_DAY) -> Scene:
     """Sun, clear sky and cloud expectations of one cell."""
-    steps = (np.arange(STEPS_PER_DAY) + 0.5) * 24 / STEPS_PER_DAY
+    steps = (np.arange(steps_per_day) + 0.5) * 24 / steps_per_day
     day, hour = (a.ravel() for a in np.meshgrid(SAMPLE_DAYS * 1.0, steps, indexing="ij"))
     month = np.searchsorted(np.cumsum(MONTH_DAYS), day)
-    weight = 1 / (np.bincount(month, minlength=12)[month])
+    weight = 1 / np.bincount(month, minlength=12)[month]
     declination, distance = declination_and_distance(day)
     phi, h = np.radians(cell.latitude), np.radians(15 * (hour - 12))
     sun = np.stack(
