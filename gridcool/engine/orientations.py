@@ -61,6 +61,13 @@ class Orientations:
         return bool(self.stencil.shape[1] == 3)
 
     @property
+    def mirrored(self) -> NDArray[np.intp]:
+        """Index of each candidate's mirror image across the meridian."""
+        steps = np.stack([self.east, self.north]) / self.step
+        where = {(round(x), round(y)): index for index, (x, y) in enumerate(steps.T)}
+        return np.array([where[(-round(x), round(y))] for x, y in steps.T], dtype=np.intp)
+
+    @property
     def interior(self) -> NDArray[np.bool_]:
         """Which candidates have a complete neighbourhood."""
         return np.asarray((self.stencil >= 0).all(axis=1))

@@ -20,8 +20,8 @@ from gridcool.physics.atmosphere import Atmosphere
 FloatArray = NDArray[np.floating]
 
 DAYS_PER_MONTH = 5
-NODES_PER_HALF_DAY = 32
-NODES_PER_DAY_IN_BINS = 72
+NODES_PER_HALF_DAY = 72
+NODES_PER_DAY_IN_BINS = 144
 TERMS = 5
 _PATH_TABLE = np.exp(np.linspace(0.0, np.log(80.0), 3000)) * 0.999
 
@@ -84,7 +84,8 @@ def path_integrals(
         tilt=np.deg2rad(orientations.tilt), azimuth=np.deg2rad(orientations.azimuth)
     )
     whole_day = hours > 1 or not orientations.on_meridian
-    months = [_month(phi, month, column, normal, hours, whole_day) for month in range(12)]
+    mirrored = orientations.mirrored if whole_day else None
+    months = [_month(phi, month, column, normal, hours, mirrored) for month in range(12)]
     parts = [np.stack([m[i] for m in months]).astype(np.float32) for i in range(4)]
     return Response(*parts)
 
@@ -95,12 +96,13 @@ def _month(
     column: Atmosphere,
     normal: panel.Vector,
     hours: int,
-    whole_day: bool,
+    mirrored: NDArray[np.intp] | None,
 ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+    """Integrals of one month: of the whole day with ``mirrored``, else twice the afternoon."""
     days, day_weights = _month_days(month)
     delta = sun.declination(days)
     irradiance = sun.TOTAL_SOLAR_IRRADIANCE * sun.distance_factor(days)
-    hour_angle, hour_weights = _hour_nodes(phi, delta, hours, whole_day)
+    hour_angle, hour_weights = _hour_nodes(phi, delta, hours, whole_day=mirrored is not None)
     weight = _by_bin(hour_weights * day_weights[:, None, None])
     # From here on: (hours, days × nodes), so that a sum over the last axis is a bin's integral.
     rays = sun.sun_vector(latitude=phi, declination=delta[:, None, None], hour_angle=hour_angle)
@@ -115,12 +117,19 @@ def _month(
         extraterrestrial,
     )
     beam_weight = np.moveaxis(beam * weight, 0, 1)  # (hours, rank, nodes)
-    panel_terms = np.stack(
-        [
-            _panel_terms(column, [r[h] for r in sun_rays], air_mass[h], beam_weight[h], normal)
-            for h in range(hours)
-        ]
-    )
+    panel_terms = np.zeros((hours, len(beam), TERMS, len(normal[2])))
+    for h in range(hours):
+        if mirrored is not None and h < hours // 2:  # the morning mirrors the afternoon
+            continue
+        lit = beam_weight[h].any(axis=0)
+        if lit.any():
+            ray = [r[h, lit] for r in sun_rays]
+            panel_terms[h] = _panel_terms(
+                column, ray, air_mass[h, lit], beam_weight[h][:, lit], normal
+            )
+    if mirrored is not None:
+        half = hours // 2
+        panel_terms[:half] = panel_terms[: hours - half - 1 : -1][..., mirrored]
     horizontal = (beam_weight * sine[:, None, :]).sum(axis=-1)
     diffuse = np.moveaxis((scattered * weight).sum(axis=-1), 0, 1)
     top = (extraterrestrial * sine * weight).sum()
@@ -171,7 +180,7 @@ def _month_days(month: int) -> tuple[FloatArray, FloatArray]:
 
 
 def _hour_nodes(
-    phi: float, delta: FloatArray, hours: int, whole_day: bool
+    phi: float, delta: FloatArray, hours: int, *, whole_day: bool
 ) -> tuple[FloatArray, FloatArray]:
     """Hour angles within daylight and weights of a 24-hour mean, shape (days, hours, nodes)."""
     sunset = sun.sunset_hour_angle(latitude=phi, declination=delta)[:, None]
