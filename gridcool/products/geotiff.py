@@ -20,6 +20,7 @@ import numpy as np
 import rasterio
 import rasterio.shutil
 from numpy.typing import NDArray
+from rasterio._err import CPLE_BaseError
 from rasterio.enums import Resampling
 from rasterio.errors import RasterioError
 from rasterio.windows import Window
@@ -33,6 +34,9 @@ CACHE_MEGABYTES = 256  # GDAL's block cache; its own default is a share of the m
 TILE = 512
 EPSG = 4326
 LAYER_FOLDER = "layers"
+
+# A copy lets GDAL's own errors through, which rasterio keeps in a private module.
+GDAL_ERRORS = (OSError, RasterioError, CPLE_BaseError)
 
 
 def gdal_environment() -> Any:
@@ -84,7 +88,7 @@ class StagedLayer:
         self.statistics: tuple[BandStatistics, ...] = ()
         self._rows = RowStatistics(self.bands, *grid.shape)
         self._lock = threading.Lock()
-        with output_errors(self.path, (OSError, RasterioError)):
+        with output_errors(self.path, GDAL_ERRORS):
             self._file = self._create(min(strip_rows, grid.rows))
 
     def __dask_tokenize__(self) -> str:
@@ -116,14 +120,14 @@ class StagedLayer:
         values = block.reshape(self.bands, -1, self.grid.columns)
         self._rows.add(rows.start, values)
         window = Window(0, rows.start, self.grid.columns, values.shape[1])
-        with self._lock, output_errors(self.path, (OSError, RasterioError)):
+        with self._lock, output_errors(self.path, GDAL_ERRORS):
             self._file.write(values, window=window)
         self._on_rows(values.shape[1])
 
     def finish(self, attributes: Mapping[str, str]) -> None:
         """Set names, units, statistics and tags, and close the file."""
         self.statistics = self._rows.bands()
-        with output_errors(self.path, (OSError, RasterioError)):
+        with output_errors(self.path, GDAL_ERRORS):
             self._file.update_tags(**_dataset_tags(self.layer, attributes))
             for index, name in enumerate(band_names(self.layer), start=1):
                 self._file.set_band_description(index, name)
@@ -137,13 +141,14 @@ class StagedLayer:
                 raise OSError("the file is shorter than what was written to it")
 
     def close(self) -> None:
-        """Close the file, finished or not."""
-        self._file.close()
+        """Close the file, finished or not; strips that still arrive are refused."""
+        with self._lock, output_errors(self.path, GDAL_ERRORS):
+            self._file.close()
 
     def blocks(self, height: int) -> Iterator[tuple[int, slice, NDArray[np.generic]]]:
         """Read back the finished file: (band, rows, values) in strips of ``height`` rows."""
         with (
-            output_errors(self.path, (OSError, RasterioError)),
+            output_errors(self.path, GDAL_ERRORS),
             gdal_environment(),
             rasterio.open(self.path) as file,
         ):
@@ -162,7 +167,7 @@ def convert(staged: StagedLayer, target: Path, threads: int = 1) -> None:
     OutputError
         If the disk is full or refuses; nothing is left at ``target`` then.
     """
-    with output_errors(target, (OSError, RasterioError)), gdal_environment():
+    with output_errors(target, GDAL_ERRORS), gdal_environment():
         try:
             _add_overviews(staged)
             rasterio.shutil.copy(

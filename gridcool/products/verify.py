@@ -3,22 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import rasterio
 from numpy.typing import NDArray
-from rasterio.errors import RasterioError
 from rasterio.windows import Window
 
 from gridcool.errors import OutputError
 from gridcool.products.failure import output_errors
-from gridcool.products.geotiff import LAYER_FOLDER, TILE, gdal_environment
+from gridcool.products.geotiff import GDAL_ERRORS, LAYER_FOLDER, TILE, gdal_environment
 from gridcool.products.netcdf import LIBRARY_LOCK, NETCDF_NAME, layer_names, open_netcdf
 from gridcool.products.progress import Progress, Report
 
-WINDOW_COLUMNS = 8 * TILE  # bounds the memory on very wide grids
+WINDOW_COLUMNS = 2 * TILE  # bounds the memory on very wide grids
+ROUNDING = 1e-6  # relative; what averaging in single precision may add to equal cells
 MEAN_TOLERANCE = 1e-9  # relative; cells are summed in another order here than while writing
 
 
@@ -49,14 +50,20 @@ def verify_layers(folder: Path, *, on_progress: Progress | None = None) -> None:
                 f"{folder} is incomplete: {NETCDF_NAME} has {len(names)} layers and the folder "
                 f"{LAYER_FOLDER} has {len(paths)}; run again to renew them."
             )
-        for name, path in paths.items():
-            with output_errors(path, (OSError, RasterioError)), gdal_environment():
-                _verify_layer(path, file[name])
+
+        def verify(name: str) -> None:
+            with output_errors(paths[name], GDAL_ERRORS), gdal_environment():
+                _verify_layer(paths[name], file[name])
             report.advance()
+
+        with ThreadPoolExecutor(max_workers=2) as readers:
+            for _ in readers.map(verify, names):
+                pass
 
 
 def _verify_layer(path: Path, variable: Any) -> None:
-    variable.set_auto_maskandscale(False)
+    with LIBRARY_LOCK:
+        variable.set_auto_maskandscale(False)
     with rasterio.open(path) as file:
         tally = _Tally(file.count)
         for window in _windows(file.height, file.width):
@@ -67,11 +74,21 @@ def _verify_layer(path: Path, variable: Any) -> None:
             if not np.array_equal(
                 cells, twin.reshape(cells.shape), equal_nan=cells.dtype.kind == "f"
             ):
-                raise OSError("its cells are not those of the NetCDF file")
+                raise _damaged(path, f"its cells are not those in {NETCDF_NAME}")
             tally.add(cells)
         for band in range(file.count):
             if not tally.agrees(band, file.tags(band + 1)):
-                raise OSError(f"band {band + 1} does not hold what was written to it")
+                raise _damaged(path, f"band {band + 1} is not what its statistics tell of")
+        overviews = len(file.overviews(1))
+    for level in range(overviews):
+        with rasterio.open(path, overview_level=level) as file:
+            for window in _windows(file.height, file.width):
+                if not tally.spans(file.read(window=window)):
+                    raise _damaged(path, "an overview goes beyond the layer's values")
+
+
+def _damaged(path: Path, how: str) -> OutputError:
+    return OutputError(f"{path} is damaged: {how}; run again to renew it.")
 
 
 def _windows(height: int, width: int) -> Iterator[Window]:
@@ -100,6 +117,15 @@ class _Tally:
             self._size[band] += np.abs(known).sum()
             self._minimum[band] = known.min(initial=self._minimum[band])
             self._maximum[band] = known.max(initial=self._maximum[band])
+
+    def spans(self, cells: NDArray[Any]) -> bool:
+        """Whether every valid cell lies between the extremes of its band, but for rounding."""
+        flat = cells.reshape(len(cells), -1)
+        largest = np.maximum(np.abs(self._minimum), np.abs(self._maximum))
+        slack = np.where(self._count > 0, ROUNDING * largest, 0.0)
+        below = np.fmin.reduce(flat, axis=1) < self._minimum - slack
+        above = np.fmax.reduce(flat, axis=1) > self._maximum + slack
+        return not (below | above).any()
 
     def agrees(self, band: int, tags: Mapping[str, str]) -> bool:
         """Whether the band's statistics tags tell of these cells."""

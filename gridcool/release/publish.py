@@ -7,6 +7,7 @@ the new one, never anything in between, whatever moment the run dies at.
 
 from __future__ import annotations
 
+import fcntl
 import logging
 import os
 import re
@@ -78,7 +79,9 @@ def require_space(output: Path, needed: int) -> None:
 def staging_folder(output: Path) -> Iterator[Path]:
     """A fresh folder ``OUT/.work/staging-…`` to build a product in, gone afterwards.
 
-    It lies on the same disk as the releases, so that `publish` can move it in one step.
+    It lies on the same disk as the releases, so that `publish` can move it in one step. What runs
+    that were killed have left behind is removed first: a living run holds a lock on its folder,
+    which the system lets go when the process ends, however it ends.
 
     Raises
     ------
@@ -90,11 +93,38 @@ def staging_folder(output: Path) -> Iterator[Path]:
         (output / WORK).mkdir(parents=True, exist_ok=True)
         # Not by tempfile: its folders are closed to others, and the release would be too.
         staged = output / WORK / f"staging-{secrets.token_hex(4)}"
+        _remove_abandoned(output / WORK)
         staged.mkdir()
+        handle = _lock(staged)
     try:
         yield staged
     finally:
         shutil.rmtree(staged, ignore_errors=True)
+        os.close(handle)
+
+
+def _remove_abandoned(work: Path) -> None:
+    """Delete what killed runs left: links not moved, folders that no living process holds."""
+    for link in work.glob(f"{CURRENT}-*"):
+        link.unlink(missing_ok=True)
+    for folder in (*work.glob("staging-*"), *work.glob("expired-*")):
+        try:
+            handle = _lock(folder)
+        except OSError:  # held by a living run, or gone by now
+            continue
+        shutil.rmtree(folder, ignore_errors=True)
+        os.close(handle)
+
+
+def _lock(folder: Path) -> int:
+    """Take the folder's lock or fail at once; closing the handle gives it back."""
+    handle = os.open(folder, os.O_RDONLY)
+    try:
+        fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+    except OSError:
+        os.close(handle)
+        raise
+    return handle
 
 
 def check_output(output: Path) -> None:
@@ -148,6 +178,7 @@ def publish(staged: Path, output: Path, *, keep: int, stamp: str) -> Path:
             raise OutputError(f"The release {release} exists already; nothing was changed.")
         _sync_tree(staged)
         release.parent.mkdir(exist_ok=True)
+        (output / WORK).mkdir(exist_ok=True)
         staged.rename(release)
         try:
             _sync(release.parent)
@@ -163,7 +194,7 @@ def publish(staged: Path, output: Path, *, keep: int, stamp: str) -> Path:
 
 def _switch(output: Path, stamp: str) -> None:
     """Point ``OUT/current`` to a release in one step."""
-    link = output / f".{CURRENT}-{secrets.token_hex(4)}"
+    link = output / WORK / f"{CURRENT}-{secrets.token_hex(4)}"  # reads right once it is moved
     link.symlink_to(Path(RELEASES) / stamp, target_is_directory=True)
     try:
         link.replace(output / CURRENT)
