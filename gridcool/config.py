@@ -124,10 +124,10 @@ class Regions(_Section):
 
 
 class Compute(_Section):
-    """How much memory the run may take and where its blocks are computed."""
+    """How much memory the run may take and what computes its blocks."""
 
     memory: Annotated[str, Field(pattern=r"^\s*\d+(\.\d+)?\s*[kMGT]i?B\s*$")] = "2 GB"
-    scheduler: str = "threads"
+    scheduler: Literal["threads"] = "threads"
 
 
 class Release(_Section):

@@ -1,0 +1,27 @@
+"""Reading back what was written."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import rasterio
+from numpy.typing import NDArray
+
+from gridcool.products.geotiff import LAYER_FOLDER
+
+
+def read_layer(product: Path, name: str) -> NDArray[Any]:
+    """A layer of a product's folder, shape (rows, columns), or (12, rows, columns) by month.
+
+    Parameters
+    ----------
+    product : Path
+        A release, or a folder that `write_layers` filled.
+    name : str
+        A layer of ``variables.toml``.
+    """
+    with rasterio.open(product / LAYER_FOLDER / f"{name}.tif") as file:
+        values: NDArray[Any] = file.read()
+    return np.squeeze(values, axis=0) if len(values) == 1 else values
