@@ -23,7 +23,9 @@ DAYS_PER_MONTH = 5
 NODES_PER_HALF_DAY = 72
 NODES_PER_DAY_IN_BINS = 144
 TERMS = 5
-_PATH_TABLE = np.exp(np.linspace(0.0, np.log(80.0), 3000)) * 0.999
+#: Air masses at which the way out is tabulated, evenly spaced in their logarithm.
+_PATHS = np.exp(np.linspace(np.log(0.999), np.log(80.0), 3000))
+_LOG_PATHS = np.log(_PATHS)
 
 
 @dataclass(frozen=True)
@@ -85,7 +87,8 @@ def path_integrals(
     )
     whole_day = hours > 1 or not orientations.on_meridian
     mirrored = orientations.mirrored if whole_day else None
-    months = [_month(phi, month, column, normal, hours, mirrored) for month in range(12)]
+    ways = _Ways.of(column)
+    months = [_month(phi, month, column, ways, normal, hours, mirrored) for month in range(12)]
     parts = [np.stack([m[i] for m in months]).astype(np.float32) for i in range(4)]
     return Response(*parts)
 
@@ -94,6 +97,7 @@ def _month(
     phi: float,
     month: int,
     column: Atmosphere,
+    ways: _Ways,
     normal: panel.Vector,
     hours: int,
     mirrored: NDArray[np.intp] | None,
@@ -125,7 +129,7 @@ def _month(
         if lit.any():
             ray = [r[h, lit] for r in sun_rays]
             panel_terms[h] = _panel_terms(
-                column, ray, air_mass[h, lit], beam_weight[h][:, lit], normal
+                ways, ray, air_mass[h, lit], beam_weight[h][:, lit], normal
             )
     if mirrored is not None:
         half = hours // 2
@@ -136,8 +140,27 @@ def _month(
     return panel_terms, horizontal, diffuse, np.asarray(top)
 
 
+@dataclass(frozen=True)
+class _Ways:
+    """The way out of each column by the air masses of `_PATHS`, shape (rank, paths).
+
+    ``transmitted`` is T_abs of the whole path, ``returned`` the share (1 − φ)(1 − T_s) of what is
+    left that the rising ray's own path sends back.
+    """
+
+    transmitted: FloatArray
+    returned: FloatArray
+
+    @staticmethod
+    def of(column: Atmosphere) -> _Ways:
+        each = column.at(np.s_[:, None])
+        unscattered, forward = atmosphere.scattering_transmittance(each, _PATHS)
+        transmitted = atmosphere.absorption_transmittance(each, _PATHS)
+        return _Ways(transmitted, (1 - forward) * (1 - unscattered))
+
+
 def _panel_terms(
-    column: Atmosphere,
+    ways: _Ways,
     sun_ray: list[FloatArray],
     air_mass: FloatArray,
     beam_weight: FloatArray,
@@ -154,18 +177,16 @@ def _panel_terms(
     front_up = np.where(upward, front, 0.0)
     path_up = np.log(sun.air_mass(np.where(upward, rising, 1.0)))
     path_both = np.log(air_mass[:, None] + np.exp(path_up))
-    table = np.log(_PATH_TABLE)
     terms = np.empty((rank, TERMS, cosine.shape[1]))
     terms[:, 2] = beam_weight @ front_up
     terms[:, 3] = beam_weight @ (front - front_up)
     terms[:, 4] = beam_weight @ back
     for k in range(rank):
-        one = column.at(k)
-        absorbed = atmosphere.absorption_transmittance(one, _PATH_TABLE)
-        unscattered, forward = atmosphere.scattering_transmittance(one, _PATH_TABLE)
-        passed = np.interp(path_both, table, absorbed) * front_up
-        sent_back = passed * np.interp(path_up, table, (1 - forward) * (1 - unscattered))
-        weight = beam_weight[k] / atmosphere.absorption_transmittance(one, air_mass)
+        passed = np.interp(path_both, _LOG_PATHS, ways.transmitted[k])
+        passed *= front_up
+        sent_back = np.interp(path_up, _LOG_PATHS, ways.returned[k])
+        sent_back *= passed
+        weight = beam_weight[k] / np.interp(np.log(air_mass), _LOG_PATHS, ways.transmitted[k])
         total = weight @ passed
         terms[k, 1] = weight @ sent_back
         terms[k, 0] = total - terms[k, 1]
