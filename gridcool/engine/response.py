@@ -7,6 +7,7 @@ on latitude, month, hour bin, column and orientation alone.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 from numpy.polynomial.legendre import leggauss
@@ -24,8 +25,8 @@ NODES_PER_HALF_DAY = 72
 NODES_PER_DAY_IN_BINS = 144
 TERMS = 5
 #: Air masses at which the way out is tabulated, evenly spaced in their logarithm.
-_PATHS = np.exp(np.linspace(np.log(0.999), np.log(80.0), 3000))
-_LOG_PATHS = np.log(_PATHS)
+_SHORTEST, _LONGEST, _PATH_STEPS = 0.999, 80.0, 3000
+_PATHS = np.geomspace(_SHORTEST, _LONGEST, _PATH_STEPS + 1)
 
 
 @dataclass(frozen=True)
@@ -175,28 +176,48 @@ def _panel_terms(
     rising = 2 * cosine * normal[2] - sun_ray[2][:, None]
     upward = (rising > 0) & (cosine > 0)
     front_up = np.where(upward, front, 0.0)
-    path_up = np.log(sun.air_mass(np.where(upward, rising, 1.0)))
-    path_both = np.log(air_mass[:, None] + np.exp(path_up))
+    path_up = sun.air_mass(np.where(upward, rising, 1.0))
+    step_both, way_both = _on_paths(air_mass[:, None] + path_up)
+    step_up, way_up = _on_paths(path_up)
+    step_down, way_down = _on_paths(air_mass)
     terms = np.empty((rank, TERMS, cosine.shape[1]))
     terms[:, 2] = beam_weight @ front_up
     terms[:, 3] = beam_weight @ (front - front_up)
     terms[:, 4] = beam_weight @ back
     for k in range(rank):
-        passed = np.interp(path_both, _LOG_PATHS, ways.transmitted[k])
+        passed = _between(ways.transmitted[k], step_both, way_both)
         passed *= front_up
-        sent_back = np.interp(path_up, _LOG_PATHS, ways.returned[k])
+        sent_back = _between(ways.returned[k], step_up, way_up)
         sent_back *= passed
-        weight = beam_weight[k] / np.interp(np.log(air_mass), _LOG_PATHS, ways.transmitted[k])
+        weight = beam_weight[k] / _between(ways.transmitted[k], step_down, way_down)
         total = weight @ passed
         terms[k, 1] = weight @ sent_back
         terms[k, 0] = total - terms[k, 1]
     return terms
 
 
+def _on_paths(air_mass: FloatArray) -> tuple[NDArray[np.intp], FloatArray]:
+    """Step of the path table below an air mass, and the way from there to the next."""
+    position = np.log(air_mass)
+    position -= np.log(_SHORTEST)
+    position *= _PATH_STEPS / np.log(_LONGEST / _SHORTEST)
+    step = position.astype(np.intp)
+    position -= step
+    return step, position
+
+
+def _between(table: FloatArray, step: NDArray[np.intp], way: FloatArray) -> FloatArray:
+    """Linear interpolation in a path table."""
+    values = np.diff(table, append=table[-1]).take(step)
+    values *= way
+    values += table.take(step)
+    return values
+
+
 def _month_days(month: int) -> tuple[FloatArray, FloatArray]:
     """Gauss–Legendre days of a month and their weights, which add up to one."""
     start = sum(sun.MONTH_LENGTHS[:month]) + 0.5
-    x, w = leggauss(DAYS_PER_MONTH)
+    x, w = _legendre(DAYS_PER_MONTH)
     return start + sun.MONTH_LENGTHS[month] * (x + 1) / 2, w / 2
 
 
@@ -215,10 +236,13 @@ def _hour_nodes(
         nodes = NODES_PER_HALF_DAY
         low, high = np.zeros_like(sunset), np.asarray(sunset)
         mirrored = 2.0
-    x, w = leggauss(nodes)
+    x, w = _legendre(nodes)
     half = (high - low)[..., None] / 2
     angle = (high + low)[..., None] / 2 + half * x
     return angle, mirrored * half * w / (2 * np.pi)
+
+
+_legendre = cache(leggauss)
 
 
 def _by_bin(values: FloatArray) -> FloatArray:
