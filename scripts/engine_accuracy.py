@@ -26,13 +26,16 @@ from invented_cells import random_cells
 def summary(title: str, found: list[Comparison]) -> str:
     """One block of figures."""
     lost = [each.lost_fine for each in found]
+    fine = [each.flux_error_fine for each in found]
     return "\n".join(
         [
             f"{title}: {len(found)} cells",
             f"  flux error      rms {root_mean_square([c.flux_error for c in found]):.4%}, "
             f"worst {max(abs(c.flux_error) for c in found):.4%}",
+            f"    every day, 4 min: rms {root_mean_square(fine):.4%}, "
+            f"worst {max(map(abs, fine)):.4%}",
             f"  flux lost       worst {max(lost):.4%}, mean {np.mean(lost):.4%} "
-            f"(ten-minute steps: worst {max(c.lost for c in found):.4%})",
+            f"(third days, 10 min: worst {max(c.lost for c in found):.4%})",
             f"  flat flux error rms {root_mean_square([c.flat_error for c in found]):.4%}, "
             f"worst {max(abs(c.flat_error) for c in found):.4%}",
             f"  escape fraction worst {max(abs(c.escape_error) for c in found):.5f}, "
@@ -48,7 +51,8 @@ def row(each: Comparison) -> str:
     return (
         f"  {each.bins:2d} bins {cell.latitude:6.1f}° {cell.elevation:5.0f} m "
         f"water {np.mean(cell.water_cm):.2f} cm aerosol {np.mean(cell.aerosol_550):.2f} "
-        f"cloud {np.mean(cell.cloud):.2f} albedo {np.min(cell.albedo):.2f}-{np.max(cell.albedo):.2f}"
+        f"cloud {np.mean(cell.cloud):.2f} "
+        f"albedo {np.min(cell.albedo):.2f}-{np.max(cell.albedo):.2f}"
         f": F {each.flux:.2f}, error {each.flux_error:+.3%}, lost {each.lost_fine:.3%}, "
         f"tilt {each.tilt:.1f} ({each.best_tilt:.1f}), "
         f"azimuth {each.azimuth:.0f} ({each.best_azimuth:.0f})"

@@ -21,7 +21,7 @@ from scipy.special import betainc
 Array = NDArray[np.float64]
 
 MONTH_DAYS = np.array([31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31])
-SAMPLE_DAYS = np.arange(2, 366, 3)
+DAY_STEP = 3  # days 2, 5, 8, …
 STEPS_PER_DAY = 144
 CLOUD_CLASSES = 400
 SOLAR_CONSTANT = 1361.0
@@ -263,10 +263,13 @@ class Scene:
     sky: Sky = field(default_factory=Sky)
 
 
-def build_scene(cell: Cell, sky: Sky, *, steps_per_day: int = STEPS_PER_DAY) -> Scene:
+def build_scene(
+    cell: Cell, sky: Sky, *, steps_per_day: int = STEPS_PER_DAY, day_step: int = DAY_STEP
+) -> Scene:
     """Sun, clear sky and cloud expectations of one cell."""
+    days = np.arange((day_step + 1) / 2, 366, day_step)
     steps = (np.arange(steps_per_day) + 0.5) * 24 / steps_per_day
-    day, hour = (a.ravel() for a in np.meshgrid(SAMPLE_DAYS * 1.0, steps, indexing="ij"))
+    day, hour = (a.ravel() for a in np.meshgrid(days, steps, indexing="ij"))
     month = np.searchsorted(np.cumsum(MONTH_DAYS), day)
     weight = 1 / np.bincount(month, minlength=12)[month]
     declination, distance = declination_and_distance(day)
