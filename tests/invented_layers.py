@@ -11,7 +11,7 @@ from gridcool.variables import layer_variables
 
 GRIDS = {
     "world": Grid(-180.0, 90.0, 1.0, 1.0, 180, 360),
-    "region": Grid(100.05, 22.55, 0.0449, 0.0449, 300, 1100),  # more than a tile: has overviews
+    "region": Grid(100.05, 22.55, 0.0449, 0.0449, 150, 600),  # more than a tile: has overviews
     "antimeridian": Grid(170.0, 20.0, 2.5, 2.0, 16, 20),
     "row": Grid(-10.5, 5.25, 0.5, 0.25, 1, 7),
     "column": Grid(-10.5, 5.25, 0.5, 0.25, 9, 1),

@@ -9,7 +9,6 @@ Staging is single-threaded on purpose: with compression threads GDAL reports no 
 
 from __future__ import annotations
 
-import calendar
 import math
 import threading
 from collections.abc import Callable, Iterator, Mapping
@@ -35,18 +34,24 @@ TILE = 512
 EPSG = 4326
 LAYER_FOLDER = "layers"
 
+# Written out, because the calendar module's names change with the user's language.
+MONTHS = (
+    *("January", "February", "March", "April", "May", "June"),
+    *("July", "August", "September", "October", "November", "December"),
+)
+
 # A copy lets GDAL's own errors through, which rasterio keeps in a private module.
 GDAL_ERRORS = (OSError, RasterioError, CPLE_BaseError)
 
 
 def gdal_environment() -> Any:
-    """GDAL with a bounded block cache and without side files."""
-    return rasterio.Env(GDAL_CACHEMAX=CACHE_MEGABYTES, GDAL_PAM_ENABLED="NO")
+    """GDAL with a bounded block cache."""
+    return rasterio.Env(GDAL_CACHEMAX=CACHE_MEGABYTES)
 
 
 def band_names(layer: LayerVariable) -> tuple[str, ...]:
     """What each band holds: the months' names, or the layer's own name."""
-    return tuple(calendar.month_name[1:13]) if layer.bands == "month" else (layer.name,)
+    return MONTHS if layer.bands == "month" else (layer.name,)
 
 
 def layer_dtype(layer: LayerVariable) -> str:

@@ -35,6 +35,7 @@ from gridcool.variables import LayerVariable
 FloatArray = NDArray[np.float64]
 
 CHUNK = 512  # cells, at most, along a side of a chunk
+CHUNK_CACHE = 2**21  # bytes for each variable: whole chunks pass through once, none comes back
 CONVENTIONS = "CF-1.11"
 NETCDF_NAME = "layers.nc"
 
@@ -131,7 +132,7 @@ def _grid_mapping(grid: Grid) -> dict[str, Any]:
     a, b, c, d, e, f = grid.affine
     mapping: dict[str, Any] = crs.to_cf()
     mapping["spatial_ref"] = crs.to_wkt("WKT1_GDAL")
-    mapping["GeoTransform"] = " ".join(f"{number:.16g}" for number in (c, a, b, f, d, e))
+    mapping["GeoTransform"] = " ".join(repr(float(number)) for number in (c, a, b, f, d, e))
     return mapping
 
 
@@ -145,6 +146,7 @@ def _declare(file: Any, staged: StagedLayer, chunk: tuple[int, int]) -> Any:
         complevel=1,
         shuffle=True,
         chunksizes=(1, *chunk) if by_month else chunk,
+        chunk_cache=CHUNK_CACHE,
         fill_value=False if layer.is_flags else np.float32(np.nan),
     )
     variable.set_auto_maskandscale(False)

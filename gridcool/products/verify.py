@@ -15,7 +15,13 @@ from rasterio.windows import Window
 from gridcool.errors import OutputError
 from gridcool.products.failure import output_errors
 from gridcool.products.geotiff import GDAL_ERRORS, LAYER_FOLDER, TILE, gdal_environment
-from gridcool.products.netcdf import LIBRARY_LOCK, NETCDF_NAME, layer_names, open_netcdf
+from gridcool.products.netcdf import (
+    CHUNK_CACHE,
+    LIBRARY_LOCK,
+    NETCDF_NAME,
+    layer_names,
+    open_netcdf,
+)
 from gridcool.products.progress import Progress, Report
 
 WINDOW_COLUMNS = 2 * TILE  # bounds the memory on very wide grids
@@ -64,6 +70,7 @@ def verify_layers(folder: Path, *, on_progress: Progress | None = None) -> None:
 def _verify_layer(path: Path, variable: Any) -> None:
     with LIBRARY_LOCK:
         variable.set_auto_maskandscale(False)
+        variable.set_var_chunk_cache(size=CHUNK_CACHE)
     with rasterio.open(path) as file:
         tally = _Tally(file.count)
         for window in _windows(file.height, file.width):
