@@ -122,9 +122,10 @@ def grid_from_bounds(bounds: Bounds, resolution: float) -> Grid:
     """The grid of square cells of ``resolution`` degrees that covers ``bounds``.
 
     Cells are counted from the north-west corner; the last row and column may reach past the south
-    and east edges by less than a cell.
+    and east edges by less than a cell. An east that is not east of west lies past 180.
     """
-    columns = max(1, _cells(bounds.east - bounds.west, resolution))
+    width = bounds.east - bounds.west
+    columns = max(1, _cells(width if width > 0 else width + 360.0, resolution))
     rows = max(1, _cells(bounds.north - bounds.south, resolution))
     return Grid(_wrap(bounds.west), bounds.north, resolution, resolution, rows, columns)
 
@@ -142,12 +143,16 @@ def grid_from_centres(latitudes: NDArray[np.float64], longitudes: NDArray[np.flo
     Raises
     ------
     ValueError
-        If the centres are not evenly spaced, or there is only one of them.
+        If the centres are not evenly spaced, there is only one of them, or a row is centred on a
+        pole, where half of it would lie outside the globe.
     """
     lat_step, first_lat = _even_spacing(np.sort(np.asarray(latitudes, float)), "latitudes", 180.0)
     lon_step, first_lon = _even_spacing(np.asarray(longitudes, float), "longitudes", 360.0)
     south = _snap_edge(first_lat - lat_step / 2, lat_step)
-    north = min(90.0, _snap_edge(south + lat_step * len(latitudes), lat_step))
+    north = _snap_edge(south + lat_step * len(latitudes), lat_step)
+    if north > 90.0 + 2e-5 or south < -90.0 - 2e-5:
+        raise ValueError("the outermost row reaches past the pole")
+    north = min(90.0, north)
     west = _snap_edge(first_lon - lon_step / 2, lon_step)
     return Grid(_wrap(west), north, lon_step, lat_step, len(latitudes), len(longitudes))
 
@@ -185,4 +190,6 @@ def _cells(extent: float, resolution: float) -> int:
 
 
 def _wrap(longitude: float) -> float:
-    return (longitude + 180.0) % 360.0 - 180.0
+    if -180.0 <= longitude < 180.0:
+        return longitude
+    return round((longitude + 180.0) % 360.0 - 180.0, 12)
