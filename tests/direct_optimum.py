@@ -5,7 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from direct_quadrature import Array, Panel, Scene, evaluate, normal
+from direct_quadrature import Panel, Scene, evaluate, normal
+from direct_sky import Array
 from scipy.optimize import minimize, minimize_scalar
 
 

@@ -8,7 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 import xarray as xr
 from direct_optimum import best_orientation
-from direct_quadrature import Cell, Panel, Sky, annual_mean, build_scene, evaluate
+from direct_quadrature import Cell, Panel, annual_mean, build_scene, evaluate
+from direct_sky import Sky
 from engine_cells import dataset_of, solved, value
 
 from gridcool.engine.options import Panel as EnginePanel

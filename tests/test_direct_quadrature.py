@@ -5,18 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from direct_optimum import best_orientation
-from direct_quadrature import (
-    CLOUD_CLASSES,
-    DIFFUSE_AIR_MASS,
-    Panel,
-    Sky,
-    air_of,
-    build_scene,
-    cloud_classes,
-    evaluate,
-    expectations,
-    moment_of_sky,
-)
+from direct_quadrature import CLOUD_CLASSES, Panel, air_of, build_scene, evaluate, expectations
+from direct_sky import DIFFUSE_AIR_MASS, Sky, cloud_classes, moment_of_sky
 from invented_cells import random_cells
 from scipy.integrate import quad
 from scipy.special import beta

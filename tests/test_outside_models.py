@@ -13,7 +13,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 import xarray as xr
-from direct_quadrature import Cell, Sky, build_scene, monthly_mean
+from direct_quadrature import Cell, build_scene, monthly_mean
+from direct_sky import Sky
 from engine_cells import CLOUD_ONLY, dataset_of, default_air, solved, value
 
 from gridcool.engine.options import Irradiance, Panel
