@@ -125,7 +125,7 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
         for warning in report.warnings:
             progress.stage(f"warning: {warning}")
     layers = screen_dataset(loaded.dataset, settings)
-    require_space(output, needed_bytes(grid, list(layers.data_vars)))
+    require_space(output, needed_bytes(grid, [str(name) for name in layers.data_vars]))
     now = datetime.now(UTC)
     with staging_folder(output) as stage:
         progress.stage("Computing and writing the layers")
@@ -197,7 +197,7 @@ def _memory(settings: Settings) -> float:
         raise SettingsError(f"compute.memory: {settings.compute.memory!r} is not a size.")
     number, prefix, binary = found.groups()
     step = 1024 if binary else 1000
-    return float(number) * step ** ("kMGT".index(prefix) + 1)
+    return float(float(number) * step ** ("kMGT".index(prefix) + 1))
 
 
 @contextmanager

@@ -99,7 +99,8 @@ def mean_orientation(
     mean_tilt = float(np.rad2deg(np.arctan2(np.hypot(east, north), up)))
     if mean_tilt < 0.05:  # flat for all purposes
         return mean_tilt, np.nan
-    return mean_tilt, float(np.rad2deg(np.arctan2(east, north)) % 360)
+    # Rounded, so that due north is 0 and not a hair under 360.
+    return mean_tilt, round(float(np.rad2deg(np.arctan2(east, north))), 6) % 360
 
 
 def _row(
