@@ -102,25 +102,25 @@ def check(settings: Settings) -> Iterator[str]:
     InputDataError
         After the last line, if any input cannot be used.
     """
-    specs = _specs(settings)
+    specs = specs_of(settings)
     reports = [describe(spec) for spec in specs]
     for report in reports:
         yield from report.lines()
         yield ""
     if any(report.errors for report in reports):
-        load_inputs(specs, _grid(settings, specs), 1)  # raises with all that is wrong
-    grid = _grid(settings, specs)
+        load_inputs(specs, grid_of(settings, specs), 1)  # raises with all that is wrong
+    grid = grid_of(settings, specs)
     yield f"target grid  {grid.rows} rows × {grid.columns} columns, {_bounds_text(grid)}"
 
 
 def screen(settings: Settings, progress: Progress) -> ScreenResult:
     """Do the whole job and publish a release; on any failure the last one stays untouched."""
     output = settings.resolve(settings.job.output)
-    specs = _specs(settings)
+    specs = specs_of(settings)
     progress.stage("Reading and checking the inputs")
     check_output(output)
-    grid = _grid(settings, specs)
-    loaded = load_inputs(specs, grid, _strip_rows(grid, settings))
+    grid = grid_of(settings, specs)
+    loaded = load_inputs(specs, grid, strip_rows(grid, settings))
     for report in loaded.reports:
         for warning in report.warnings:
             progress.stage(f"warning: {warning}")
@@ -164,7 +164,8 @@ def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
     return solve(dataset, panel, Sky(**settings.sky.model_dump()))
 
 
-def _specs(settings: Settings) -> list[InputSpec]:
+def specs_of(settings: Settings) -> list[InputSpec]:
+    """The inputs that the settings name, with absolute paths."""
     specs = []
     for name, given in settings.inputs.items():
         fields = given.model_dump()
@@ -174,14 +175,15 @@ def _specs(settings: Settings) -> list[InputSpec]:
     return specs
 
 
-def _grid(settings: Settings, specs: list[InputSpec]) -> Grid:
+def grid_of(settings: Settings, specs: list[InputSpec]) -> Grid:
+    """The target grid that the settings ask for; that of the albedo where they say nothing."""
     wanted = settings.grid
     bounds = None if wanted.bounds is None else Bounds(*wanted.bounds)
     like = "albedo" if wanted.like is None and wanted.resolution is None else wanted.like
     return target_grid(specs, like=like, resolution=wanted.resolution, bounds=bounds)
 
 
-def _strip_rows(grid: Grid, settings: Settings) -> int:
+def strip_rows(grid: Grid, settings: Settings) -> int:
     """Rows of a strip: few enough for the memory, many enough to keep the threads busy."""
     bands = sum(12 if layer.bands == "month" else 1 for layer in layer_variables().values())
     monthly = 12 * len(settings.inputs)
