@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 import tomllib
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
@@ -75,9 +76,28 @@ class GridSection(_Section):
             west, south, east, north = self.bounds
             if not -90 <= south < north <= 90:
                 raise ValueError("bounds are [west, south, east, north] with south below north")
-            if not (-180 <= west < 360 and 0 < (east - west) % 360.0000001 <= 360):
+            if not (-180 <= west < 360 and 0 < _width(west, east) <= 360):
                 raise ValueError("bounds are [west, south, east, north] in degrees east")
+        if self.resolution is not None:
+            _refuse_overlap(self.resolution, self.bounds or [-180.0, -90.0, 180.0, 90.0])
         return self
+
+
+def _width(west: float, east: float) -> float:
+    """Degrees from west to east; an east that is not east of west lies past 180."""
+    return east - west if east > west else east - west + 360.0
+
+
+def _refuse_overlap(step: float, bounds: list[float]) -> None:
+    """Refuse cells that would go round more than once or reach past the south pole."""
+    west, south, east, north = bounds
+    for extent, room in ((north - south, north + 90.0), (_width(west, east), 360.0)):
+        if math.ceil(extent / step - 1e-6) * step > room + 1e-6:
+            fits = extent / max(1, round(extent / step))
+            raise ValueError(
+                f"cells of {step!r} degrees do not fill {extent:g} degrees evenly and would reach "
+                f"past the globe; {fits!r} fits"
+            )
 
 
 class Sky(_Section):
@@ -151,21 +171,32 @@ class Settings(_Section):
 
     @model_validator(mode="after")
     def _inputs_fit(self) -> Self:
-        for name in REQUIRED_INPUTS:
-            if name not in self.inputs:
-                raise ValueError(f"[inputs.{name}] is needed")
+        problems = [
+            f"[inputs.{name}] is needed" for name in REQUIRED_INPUTS if name not in self.inputs
+        ]
+        problems += [misspelt for name in self.inputs if (misspelt := _misspelt(name))]
         if ("temperature_maximum" in self.inputs) != ("temperature_minimum" in self.inputs):
-            raise ValueError("temperature_maximum and temperature_minimum are needed together")
+            problems.append("temperature_maximum and temperature_minimum are needed together")
         if self.grid.like is not None and self.grid.like not in self.inputs:
-            raise ValueError(f'[grid] like = "{self.grid.like}" is not one of the inputs')
+            problems.append(f'[grid] like = "{self.grid.like}" is not one of the inputs')
         missing = _missing_for(self.sky.irradiance, set(self.inputs))
         if missing:
-            raise ValueError(f'[sky] irradiance = "{self.sky.irradiance}" needs {missing}')
+            problems.append(f'[sky] irradiance = "{self.sky.irradiance}" needs {missing}')
+        if problems:
+            raise ValueError("; ".join(problems))
         return self
 
     def resolve(self, path: str) -> Path:
         """An absolute path from one that the settings file names."""
         return (self.base / Path(path).expanduser()).resolve()
+
+
+def _misspelt(name: str) -> str:
+    """A sentence if an input has almost the name of a known one and would be left unused."""
+    if name in input_variables():
+        return ""
+    near = difflib.get_close_matches(name, input_variables(), n=1, cutoff=0.8)
+    return f"[inputs.{name}] is not known (did you mean [inputs.{near[0]}]?)" if near else ""
 
 
 def _missing_for(irradiance: str, inputs: set[str]) -> str:
@@ -214,14 +245,19 @@ def settings_from(
 
 
 def _sentence(error: Any) -> str:
-    where = ".".join(str(part) for part in error["loc"])
+    where, got = ".".join(str(part) for part in error["loc"]), repr(error["input"])
     if error["type"] == "extra_forbidden":
-        return f"Unknown key {where}{_did_you_mean(error['loc'])}."
+        return f"Unknown key {where}; {_did_you_mean(error['loc'])}"
     if error["type"] == "missing":
         return f"Key {where} is missing."
-    message = error["msg"].removeprefix("Value error, ")
-    got = "" if error["type"] == "value_error" else f" (found {error['input']!r})"
-    return f"{where or 'The settings'}: {message}{got}."
+    if error["type"] in ("model_type", "dict_type"):
+        return f"{where} is a section with keys of its own: write [{where}] (found {got})."
+    if error["type"] == "string_pattern_mismatch":
+        return f'{where}: write a size such as "2 GB" (found {got}).'
+    if error["type"] == "value_error":
+        message = error["msg"].removeprefix("Value error, ")
+        return f"{where}: {message}." if where else f"{message}."
+    return f"{where}: {error['msg']} (found {got})."
 
 
 def _did_you_mean(location: tuple[Any, ...]) -> str:
@@ -233,7 +269,7 @@ def _did_you_mean(location: tuple[Any, ...]) -> str:
     names = [] if isinstance(model, str) or model is None else list(model.model_fields)
     known = [name for name in names if name != "base"]
     near = difflib.get_close_matches(str(location[-1]), known, n=1, cutoff=0.5)
-    return f"; did you mean {near[0]}?" if near else f"; known here: {', '.join(known)}"
+    return f"did you mean {near[0]}?" if near else f"known here: {', '.join(known)}."
 
 
 def _section(model: type[BaseModel], part: str) -> Any:
@@ -242,8 +278,3 @@ def _section(model: type[BaseModel], part: str) -> Any:
     annotation = model.model_fields[part].annotation if part in model.model_fields else None
     options = [annotation, *getattr(annotation, "__args__", ())]
     return next((o for o in options if isinstance(o, type) and issubclass(o, BaseModel)), None)
-
-
-def known_inputs() -> tuple[str, ...]:
-    """Names of the inputs that the account itself uses."""
-    return tuple(input_variables())
