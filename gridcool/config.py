@@ -18,7 +18,7 @@ from pydantic import (
 )
 
 from gridcool.errors import SettingsError
-from gridcool.variables import input_variables
+from gridcool.variables import input_variables, layer_variables
 
 REQUIRED_INPUTS = ("albedo",)
 
@@ -129,6 +129,37 @@ class Panel(_Section):
     ground_cover: Annotated[Number, Field(gt=0, le=1)] = 0.3
 
 
+class Worth(_Section):
+    """What the flux is worth in other terms."""
+
+    carbon_dioxide_ppm: Annotated[Number, Field(gt=150, lt=2000)] = 425.0
+
+
+class Uncertainty(_Section):
+    """Stated standard errors of the inputs."""
+
+    albedo: Annotated[Number, Field(ge=0, le=0.3)] = 0.02
+    concentration_factor: Annotated[Number, Field(gt=0, le=5)] = 0.6
+
+
+class Layers(_Section):
+    """Layers wanted beyond the usual ones."""
+
+    extra: list[str] = []
+
+    @model_validator(mode="after")
+    def _known(self) -> Self:
+        offered = [name for name, layer in layer_variables().items() if layer.on_request]
+        for name in self.extra:
+            if name not in offered:
+                near = difflib.get_close_matches(name, offered, n=1, cutoff=0.5)
+                hint = (
+                    f"did you mean {near[0]}?" if near else f"on request are {', '.join(offered)}"
+                )
+                raise ValueError(f"extra: there is no layer {name} on request; {hint}")
+        return self
+
+
 class Regions(_Section):
     """Polygons with a name attribute, or boxes of some degrees."""
 
@@ -164,6 +195,9 @@ class Settings(_Section):
     grid: GridSection = GridSection()
     sky: Sky = Sky()
     panel: Panel = Panel()
+    worth: Worth = Worth()
+    uncertainty: Uncertainty = Uncertainty()
+    layers: Layers = Layers()
     regions: Regions | None = None
     compute: Compute = Compute()
     release: Release = Release()

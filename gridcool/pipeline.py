@@ -18,7 +18,7 @@ from threadpoolctl import threadpool_limits
 from gridcool import __version__
 from gridcool.config import Settings
 from gridcool.engine.blocks import solve
-from gridcool.engine.options import Panel, Sky
+from gridcool.engine.options import Field, InputError, Panel, Sky
 from gridcool.errors import SettingsError
 from gridcool.grid import Bounds, Grid
 from gridcool.inputs.load import describe, load_inputs, target_grid
@@ -154,14 +154,21 @@ def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
     dataset : xarray.Dataset
         As `gridcool.engine.blocks.solve` takes it.
     settings : Settings
-        Only the sections sky and panel are used.
+        The sections sky, panel, worth, uncertainty and layers are used.
     """
     panel = Panel(
         reflectance=settings.panel.reflectance * (1 - settings.panel.soiling),
         specular_share=settings.panel.specular_share,
         back_reflectance=settings.panel.back_reflectance,
     )
-    return solve(dataset, panel, Sky(**settings.sky.model_dump()))
+    return solve(
+        dataset,
+        panel,
+        Sky(**settings.sky.model_dump()),
+        field=Field(settings.panel.ground_cover, settings.worth.carbon_dioxide_ppm),
+        error=InputError(**settings.uncertainty.model_dump()),
+        extra_layers=settings.layers.extra,
+    )
 
 
 def specs_of(settings: Settings) -> list[InputSpec]:
@@ -185,7 +192,7 @@ def grid_of(settings: Settings, specs: list[InputSpec]) -> Grid:
 
 def strip_rows(grid: Grid, settings: Settings) -> int:
     """Rows of a strip: few enough for the memory, many enough to keep the threads busy."""
-    bands = sum(12 if layer.bands == "month" else 1 for layer in layer_variables().values())
+    bands = sum(layer.count for layer in layer_variables().values())
     monthly = 12 * len(settings.inputs)
     row_bytes = grid.columns * 4 * (2 * bands + 4 * monthly)
     threads = dask.system.CPU_COUNT

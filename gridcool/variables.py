@@ -10,6 +10,9 @@ from importlib.resources import files
 from types import MappingProxyType
 from typing import Any, Literal
 
+#: How many bands a layer has.
+BANDS = {"year": 1, "month": 12, "season": 2}
+
 
 @dataclass(frozen=True)
 class Flag:
@@ -48,10 +51,22 @@ class LayerVariable:
     standard_name: str
     long_name: str
     units: str
-    bands: Literal["year", "month"]
+    bands: Literal["year", "month", "season"]
     cell_methods: str
     ramp: str
     flags: tuple[Flag, ...] = ()
+    on_request: bool = False
+    caution: str = ""
+
+    @property
+    def count(self) -> int:
+        """Number of bands."""
+        return BANDS[self.bands]
+
+    @property
+    def dimensions(self) -> tuple[str, ...]:
+        """Dimensions, slowest first."""
+        return (*((self.bands,) if self.count > 1 else ()), "latitude", "longitude")
 
     @property
     def is_flags(self) -> bool:

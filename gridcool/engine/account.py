@@ -8,7 +8,7 @@ same of overcast. Arrays are float32; months that do not count are zeroed by `Ce
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -202,6 +202,50 @@ def diffuse_parts(cells: Cells, panel: Panel) -> DiffuseParts:
     forgone = (ground * (1 - back / 2) + caught, back / 2 * ground - caught)
     seen = rho / 2 * cells.diffuse
     return DiffuseParts(escaping, forgone, (seen, seen))
+
+
+def local_cut(
+    cells: Cells,
+    panel: Panel,
+    integrals: FloatArray,
+    tilt: FloatArray,
+    month_weights: FloatArray,
+) -> FloatArray:
+    """Share by which a panel cuts the sunlight that its place absorbs, over the year.
+
+    The same account with nothing between the panel and the sky: every ray that leaves upward is
+    gone, every ray that goes down meets the ground once. A flat panel gives (ρ−α)/(1−α).
+
+    Parameters
+    ----------
+    cells, panel, integrals
+        As for `outcome`.
+    tilt : array, shape (cells,)
+        Degrees.
+    month_weights : array, shape (12, 1)
+
+    Returns
+    -------
+    array, shape (cells,)
+    """
+    m = cells.moments
+    nothing = np.zeros_like(m.beam)
+    bare = replace(
+        m,
+        beam_out=m.beam,
+        ground_beam=m.beam,
+        ground_beam_clear=nothing,
+        ground_beam_cloud=nothing,
+        ground_whole=m.whole,
+    )
+    open_sky = replace(cells, moments=bare, escape=np.ones_like(cells.escape))
+    # The first term holds B f T of rays that leave upward; without air T is one.
+    clear = np.concatenate([integrals[:, :, 2:3], integrals[:, :, 1:]], axis=2)
+    cosine = np.cos(np.deg2rad(tilt))
+    result = outcome(open_sky, panel, clear, diffuse_parts(open_sky, panel), cosine)
+    absorbed = ((1 - cells.albedo) * cells.irradiance * month_weights).sum(axis=0)
+    sent_up = (result.rejected * month_weights).sum(axis=0)
+    return np.asarray(sent_up / np.where(absorbed > 0, absorbed, np.nan))
 
 
 def _in_powers(parts: tuple[FloatArray, ...], cosine: FloatArray) -> FloatArray:

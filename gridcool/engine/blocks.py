@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Hashable, Mapping
+from collections.abc import Hashable, Mapping, Sequence
 from typing import Any
 
 import dask.array as da
@@ -13,10 +13,11 @@ from numpy.typing import NDArray
 
 from gridcool.engine.clear_sky import COLUMN_INPUTS
 from gridcool.engine.columns import column_basis
-from gridcool.engine.options import Panel, Sky
+from gridcool.engine.options import Field, InputError, Panel, Sky
 from gridcool.engine.orientations import compass, meridian
+from gridcool.engine.plan import Plan
 from gridcool.engine.response import Response, path_integrals
-from gridcool.engine.strips import Plan, layer_bands, solve_strip
+from gridcool.engine.strips import layer_bands, solve_strip
 from gridcool.errors import InputDataError
 from gridcool.variables import input_variables, layer_variables
 
@@ -26,7 +27,15 @@ LATITUDE_STEP = 2.5  # degrees between nodes of the path integrals
 USED = ("albedo", "cloud_fraction", "temperature_range", "surface_shortwave", *COLUMN_INPUTS)
 
 
-def solve(dataset: xr.Dataset, panel: Panel | None = None, sky: Sky | None = None) -> xr.Dataset:
+def solve(
+    dataset: xr.Dataset,
+    panel: Panel | None = None,
+    sky: Sky | None = None,
+    *,
+    field: Field | None = None,
+    error: InputError | None = None,
+    extra_layers: Sequence[str] = (),
+) -> xr.Dataset:
     """Best orientation and energy account of every cell, lazily.
 
     Parameters
@@ -38,6 +47,10 @@ def solve(dataset: xr.Dataset, panel: Panel | None = None, sky: Sky | None = Non
         missing. Any latitudes are welcome, evenly spaced or not.
     panel : Panel
     sky : Sky
+    field : Field
+    error : InputError
+    extra_layers : sequence of str
+        Layers beyond the usual ones, marked ``on_request`` in ``variables.toml``.
 
     Returns
     -------
@@ -61,9 +74,15 @@ def solve(dataset: xr.Dataset, panel: Panel | None = None, sky: Sky | None = Non
         basis=column_basis(varying),
         orientations=compass() if hours > 1 else meridian(),
         hours=hours,
+        field=field or Field(),
+        error=error or InputError(),
+        layers=tuple(
+            name
+            for name, layer in layer_variables().items()
+            if not layer.on_request or name in extra_layers
+        ),
     )
-    stack = _solve_lazily(dataset, plan)
-    return _label(stack, dataset)
+    return _label(_solve_lazily(dataset, plan), dataset, plan.layers)
 
 
 def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:
@@ -71,7 +90,7 @@ def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:
     arrays = {name: _strips(dataset, name) for name in names}
     latitudes = np.asarray(dataset["latitude"].values, float)
     columns = dataset.sizes["longitude"]
-    bands = list(layer_bands().values())[-1].stop
+    bands = list(layer_bands(plan.layers).values())[-1].stop
     integrals = delayed(path_integrals, pure=True)
     plan_once = delayed(plan, traverse=False)
     nodes: dict[int, Any] = {}
@@ -162,21 +181,17 @@ def _strips(dataset: xr.Dataset, name: str) -> da.Array:
     return strips
 
 
-def _label(stack: da.Array, dataset: xr.Dataset) -> xr.Dataset:
+def _label(stack: da.Array, dataset: xr.Dataset, wanted: tuple[str, ...]) -> xr.Dataset:
     coordinates = {
         "month": np.arange(1, 13),
+        "season": [1, 2],
         "latitude": dataset["latitude"],
         "longitude": dataset["longitude"],
     }
     layers = {}
-    for name, layer in layer_variables().items():
-        band = layer_bands()[name]
-        if layer.bands == "month":
-            dims: tuple[str, ...] = ("month", "latitude", "longitude")
-            values = stack[band]
-        else:
-            dims = ("latitude", "longitude")
-            values = stack[band.start]
+    for name in wanted:
+        layer, band = layer_variables()[name], layer_bands(wanted)[name]
+        values = stack[band] if layer.count > 1 else stack[band.start]
         if layer.is_flags:
             values = values.astype(np.uint16)
         attributes = {
@@ -185,5 +200,5 @@ def _label(stack: da.Array, dataset: xr.Dataset) -> xr.Dataset:
             "units": layer.units,
             "cell_methods": layer.cell_methods,
         }
-        layers[name] = (dims, values, {k: v for k, v in attributes.items() if v})
+        layers[name] = (layer.dimensions, values, {k: v for k, v in attributes.items() if v})
     return xr.Dataset(layers, coords=coordinates)

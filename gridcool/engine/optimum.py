@@ -44,6 +44,11 @@ class Best:
         gamma = np.where(gamma >= 360, 0, gamma)  # what single precision rounds up to a full turn
         return np.where(self.tilt > 0, gamma, np.float32(np.nan))
 
+    def value(self, flux: FloatArray) -> FloatArray:
+        """What a response of the same cells, shape (cells, orientations), is worth here."""
+        around = np.take_along_axis(flux, self.stencil.T, axis=1)
+        return np.asarray((around * self.weights.T).sum(axis=1))
+
     def interpolate(self, table: FloatArray) -> FloatArray:
         """Values at the best orientation from a table over candidates.
 

@@ -60,3 +60,35 @@ class Sky:
     overcast_reflectance: float = clouds.OVERCAST_REFLECTANCE
     snow_albedo: float = 0.5
     snow_covers_panel: bool = True
+
+
+@dataclass(frozen=True)
+class Field:
+    """The field of panels and the air it stands in.
+
+    Attributes
+    ----------
+    ground_cover : float
+        Panel area over field area.
+    carbon_dioxide_ppm : float
+        Today's carbon dioxide, for the standing equivalent.
+    """
+
+    ground_cover: float = 0.3
+    carbon_dioxide_ppm: float = 425.0
+
+
+@dataclass(frozen=True)
+class InputError:
+    """Stated standard errors of inputs.
+
+    Attributes
+    ----------
+    albedo : float
+        Of the ground's albedo, the same in all months.
+    concentration_factor : float
+        Factor on the cloud concentration that stands for one standard error.
+    """
+
+    albedo: float = 0.02
+    concentration_factor: float = 0.6

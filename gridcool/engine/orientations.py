@@ -68,6 +68,12 @@ class Orientations:
         return np.array([where[(-round(x), round(y))] for x, y in steps.T], dtype=np.intp)
 
     @property
+    def coarse(self) -> NDArray[np.intp]:
+        """Indices of every second candidate with a complete neighbourhood."""
+        even = [np.round(each / self.step) % 2 == 0 for each in (self.east, self.north)]
+        return np.flatnonzero(even[0] & even[1] & self.interior)
+
+    @property
     def interior(self) -> NDArray[np.bool_]:
         """Which candidates have a complete neighbourhood."""
         return np.asarray((self.stencil >= 0).all(axis=1))

@@ -7,22 +7,19 @@ on latitude, month, hour bin, column and orientation alone.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import cache
 
 import numpy as np
-from numpy.polynomial.legendre import leggauss
 from numpy.typing import NDArray
 
 from gridcool.engine.columns import ColumnBasis
+from gridcool.engine.glare import low_rays
 from gridcool.engine.orientations import Orientations
+from gridcool.engine.quadrature import hour_nodes, month_days
 from gridcool.physics import atmosphere, panel, sun
 from gridcool.physics.atmosphere import Atmosphere
 
 FloatArray = NDArray[np.floating]
 
-DAYS_PER_MONTH = 5
-NODES_PER_HALF_DAY = 72
-NODES_PER_DAY_IN_BINS = 144
 TERMS = 5
 #: Air masses at which the way out is tabulated, evenly spaced in their logarithm.
 _SHORTEST, _LONGEST, _PATH_STEPS = 0.999, 80.0, 3000
@@ -42,12 +39,15 @@ class Response:
         ⟨B₀ μ⟩ and ⟨I_as⟩ on the horizontal, before bounces.
     extraterrestrial : array, shape (12,)
         R_a, irradiance of the horizontal above the atmosphere.
+    low_rays : array, shape (8, orientations)
+        Hours a year in which the mirrored beam leaves low, by compass sector, see `glare`.
     """
 
     panel: FloatArray
     beam: FloatArray
     scattered: FloatArray
     extraterrestrial: FloatArray
+    low_rays: FloatArray
 
     @staticmethod
     def blend(responses: list[Response], weights: FloatArray) -> Response:
@@ -62,6 +62,7 @@ class Response:
             np.maximum(total("beam"), 0),
             np.maximum(total("scattered"), 0),
             np.maximum(total("extraterrestrial"), 0),
+            np.maximum(total("low_rays"), 0),
         )
 
 
@@ -91,7 +92,7 @@ def path_integrals(
     ways = _Ways.of(column)
     months = [_month(phi, month, column, ways, normal, hours, mirrored) for month in range(12)]
     parts = [np.stack([m[i] for m in months]).astype(np.float32) for i in range(4)]
-    return Response(*parts)
+    return Response(parts[0], parts[1], parts[2], parts[3], low_rays(latitude, orientations))
 
 
 def _month(
@@ -104,10 +105,10 @@ def _month(
     mirrored: NDArray[np.intp] | None,
 ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
     """Integrals of one month: of the whole day with ``mirrored``, else twice the afternoon."""
-    days, day_weights = _month_days(month)
+    days, day_weights = month_days(month)
     delta = sun.declination(days)
     irradiance = sun.TOTAL_SOLAR_IRRADIANCE * sun.distance_factor(days)
-    hour_angle, hour_weights = _hour_nodes(phi, delta, hours, whole_day=mirrored is not None)
+    hour_angle, hour_weights = hour_nodes(phi, delta, hours, whole_day=mirrored is not None)
     weight = _by_bin(hour_weights * day_weights[:, None, None])
     # From here on: (hours, days × nodes), so that a sum over the last axis is a bin's integral.
     rays = sun.sun_vector(latitude=phi, declination=delta[:, None, None], hour_angle=hour_angle)
@@ -212,37 +213,6 @@ def _between(table: FloatArray, step: NDArray[np.intp], way: FloatArray) -> Floa
     values *= way
     values += table.take(step)
     return values
-
-
-def _month_days(month: int) -> tuple[FloatArray, FloatArray]:
-    """Gauss–Legendre days of a month and their weights, which add up to one."""
-    start = sum(sun.MONTH_LENGTHS[:month]) + 0.5
-    x, w = _legendre(DAYS_PER_MONTH)
-    return start + sun.MONTH_LENGTHS[month] * (x + 1) / 2, w / 2
-
-
-def _hour_nodes(
-    phi: float, delta: FloatArray, hours: int, *, whole_day: bool
-) -> tuple[FloatArray, FloatArray]:
-    """Hour angles within daylight and weights of a 24-hour mean, shape (days, hours, nodes)."""
-    sunset = sun.sunset_hour_angle(latitude=phi, declination=delta)[:, None]
-    if whole_day:
-        edges = np.linspace(-np.pi, np.pi, hours + 1)
-        nodes = max(4, NODES_PER_DAY_IN_BINS // hours)
-        low = np.asarray(np.clip(edges[:-1], -sunset, sunset))
-        high = np.asarray(np.clip(edges[1:], -sunset, sunset))
-        mirrored = 1.0
-    else:
-        nodes = NODES_PER_HALF_DAY
-        low, high = np.zeros_like(sunset), np.asarray(sunset)
-        mirrored = 2.0
-    x, w = _legendre(nodes)
-    half = (high - low)[..., None] / 2
-    angle = (high + low)[..., None] / 2 + half * x
-    return angle, mirrored * half * w / (2 * np.pi)
-
-
-_legendre = cache(leggauss)
 
 
 def _by_bin(values: FloatArray) -> FloatArray:

@@ -31,7 +31,8 @@ FloatArray = NDArray[np.floating]
 
 WGS84 = "EPSG:4326"
 EQUAL_AREA = "+proj=cea +ellps=WGS84"
-SEGMENT_DEGREES = 0.1  # edges are bent into the equal-area plane in pieces of this length
+SEGMENT_DEGREES = 0.05  # edges are bent into the equal-area plane in pieces of this length,
+SEGMENT_SHARE = 1 / 64  # or of this share of the geometry's extent if that is less
 COMMON_NAMES = ("name", "NAME", "Name", "region", "district")
 
 
@@ -95,7 +96,9 @@ def read_regions(path: Path, name: str | None) -> Regions:
     if not path.exists():
         raise InputDataError(f"Region file {path} does not exist; check [regions] path.")
     try:
-        frame = pyogrio.read_dataframe(path)
+        layers = [(name, kind or "") for name, kind in pyogrio.list_layers(path)]
+        polygonal = [name for name, kind in layers if "Polygon" in kind] or [n for n, _ in layers]
+        frame = pyogrio.read_dataframe(path, layer=next(iter(polygonal), None))
     except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError) as problem:
         raise InputDataError(
             f"Region file {path} cannot be read as polygons ({problem}); "
@@ -104,6 +107,8 @@ def read_regions(path: Path, name: str | None) -> Regions:
     if "geometry" not in frame:
         raise InputDataError(f"Region file {path} holds a table without geometries.")
     notes = []
+    if len(polygonal) > 1:
+        notes.append(f"{path.name} has several layers of polygons; {polygonal[0]} is used.")
     if frame.crs is None:
         if np.abs(frame.total_bounds).max() > 360:
             raise InputDataError(
@@ -118,6 +123,11 @@ def read_regions(path: Path, name: str | None) -> Regions:
         raise InputDataError(
             f"Region file {path} cannot be brought to WGS 84: {problem}."
         ) from None
+    if np.abs(frame.bounds[["miny", "maxy"]].to_numpy()).max(initial=0.0) > 90 + 1e-6:
+        raise InputDataError(
+            f"Region file {path} has latitudes beyond the poles; check its coordinate reference "
+            "system and the order of its axes."
+        )
     names = _names(frame, path, name)
     collected: dict[str, list[BaseGeometry]] = {}
     for label, geometry in zip(names, frame.geometry, strict=True):
@@ -136,16 +146,18 @@ def box_regions(bounds: Bounds, size: float) -> Regions:
 
     The corner is written like "05N 120E"; boxes start at multiples of the size.
     """
-    names, geometries = [], []
+    pieces: dict[str, list[BaseGeometry]] = {}
     south = np.floor(bounds.south / size + 1e-9) * size
     west = np.floor(bounds.west / size + 1e-9) * size
     for y in np.arange(south, bounds.north - 1e-9, size):
         for x in np.arange(west, bounds.east - 1e-9, size):
-            low, high = max(y, -90.0), min(y + size, 90.0)
+            low, high = max(y, bounds.south), min(y + size, bounds.north)
             left, right = max(x, bounds.west), min(x + size, bounds.east)
-            names.append(f"{_degrees(y, 'NS', 2)} {_degrees((x + 180) % 360 - 180, 'EW', 3)}")
-            geometries.append(_within_globe(shapely.box(left, low, right, high)))
-    return Regions(tuple(names), tuple(geometries))
+            name = f"{_degrees(y, 'NS', 2)} {_degrees((x + 180) % 360 - 180, 'EW', 3)}"
+            # A grid that starts inside a box meets its other part at the far end.
+            box = _within_globe(shapely.box(left, low, right, high))
+            pieces.setdefault(name, []).append(box)
+    return Regions(tuple(pieces), tuple(shapely.union_all(parts) for parts in pieces.values()))
 
 
 def coverage(regions: Regions, grid: Grid) -> list[Cover]:
@@ -202,7 +214,9 @@ def ellipsoid_area(geometry: BaseGeometry) -> float:
     if geometry.is_empty:
         return 0.0
     project = _equal_area().transform
-    fine = shapely.segmentize(geometry, SEGMENT_DEGREES)
+    west, south, east, north = geometry.bounds
+    piece = min(SEGMENT_DEGREES, SEGMENT_SHARE * max(east - west, north - south))
+    fine = shapely.segmentize(geometry, piece)
     plane = shapely.transform(fine, lambda xy: np.column_stack(project(xy[:, 0], xy[:, 1])))
     return float(plane.area)
 
@@ -231,8 +245,8 @@ def _usable(geometry: BaseGeometry | None) -> BaseGeometry:
     """Valid polygons within the globe, or nothing."""
     if geometry is None or geometry.is_empty:
         return shapely.Polygon()
-    drawn = shapely.MultiPolygon([_unwrapped(polygon) for polygon in _polygons(geometry)])
-    return _within_globe(shapely.MultiPolygon(_polygons(shapely.make_valid(drawn))))
+    drawn = [shapely.make_valid(_unwrapped(polygon)) for polygon in _polygons(geometry)]
+    return _within_globe(shapely.union_all([part for each in drawn for part in _polygons(each)]))
 
 
 def _polygons(geometry: BaseGeometry) -> list[Any]:

@@ -39,6 +39,7 @@ MONTHS = (
     *("January", "February", "March", "April", "May", "June"),
     *("July", "August", "September", "October", "November", "December"),
 )
+SEASONS = ("season of low sun", "season of high sun")
 
 # A copy lets GDAL's own errors through, which rasterio keeps in a private module.
 GDAL_ERRORS = (OSError, RasterioError, CPLE_BaseError)
@@ -50,8 +51,8 @@ def gdal_environment() -> Any:
 
 
 def band_names(layer: LayerVariable) -> tuple[str, ...]:
-    """What each band holds: the months' names, or the layer's own name."""
-    return MONTHS if layer.bands == "month" else (layer.name,)
+    """What each band holds: the names of months or seasons, or the layer's own name."""
+    return {"month": MONTHS, "season": SEASONS}.get(layer.bands, (layer.name,))
 
 
 def layer_dtype(layer: LayerVariable) -> str:
@@ -235,6 +236,7 @@ def _dataset_tags(layer: LayerVariable, attributes: Mapping[str, str]) -> dict[s
         "long_name": layer.long_name,
         "units": layer.units,
         "cell_methods": layer.cell_methods,
+        "caution": layer.caution,
     }
     bits = {f"flag_{flag.value}": f"{flag.meaning}: {flag.description}" for flag in layer.flags}
     tags = {**attributes, **own, **bits}

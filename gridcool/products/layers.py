@@ -107,8 +107,7 @@ def _arrays(dataset: xr.Dataset, grid: Grid) -> dict[str, da.Array]:
         layer = layer_variables().get(str(name))
         if layer is None:
             raise ValueError(f"{name} is not a declared layer")
-        months = ("month",) if layer.bands == "month" else ()
-        dims = (*months, "latitude", "longitude")
+        dims = layer.dimensions
         if set(array.dims) != set(dims):
             raise ValueError(f"{name} has dimensions {array.dims}, not {dims}")
         rows = array.chunksizes.get("latitude", STRIP_ROWS)

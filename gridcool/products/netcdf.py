@@ -30,7 +30,7 @@ from xarray.backends.locks import HDF5_LOCK, NETCDFC_LOCK, combine_locks
 from gridcool.grid import Grid
 from gridcool.products.failure import output_errors
 from gridcool.products.geotiff import EPSG, StagedLayer, layer_dtype
-from gridcool.variables import LayerVariable
+from gridcool.variables import BANDS, LayerVariable
 
 FloatArray = NDArray[np.float64]
 
@@ -76,7 +76,7 @@ def write_netcdf(
                 variables = [_declare(file, staged, chunk) for staged in layers]
             for staged, variable in zip(layers, variables, strict=True):
                 for band, rows, values in staged.blocks(chunk[0]):
-                    where = (band, rows) if staged.layer.bands == "month" else (rows,)
+                    where = (band, rows) if staged.layer.count > 1 else (rows,)
                     with LIBRARY_LOCK:
                         variable[where] = values
                     if rows.stop == grid.rows:
@@ -92,13 +92,17 @@ def _chunk_shape(grid: Grid) -> tuple[int, int]:
 
 def _describe_file(file: Any, grid: Grid, attributes: Mapping[str, str]) -> None:
     file.setncatts({"Conventions": CONVENTIONS, **attributes})
-    file.createDimension("month", 12)
+    file.createDimension("month", BANDS["month"])
+    file.createDimension("season", BANDS["season"])
     file.createDimension("latitude", grid.rows)
     file.createDimension("longitude", grid.columns)
     file.createDimension("bounds", 2)
     month = file.createVariable("month", "i4", ("month",))
     month.setncatts({"long_name": "month of the year", "units": "1"})
     month[:] = np.arange(1, 13)
+    season = file.createVariable("season", "i4", ("season",))
+    season.setncatts({"long_name": "1: season of low sun, 2: season of high sun", "units": "1"})
+    season[:] = (1, 2)
     year = file.createVariable("year", str, ())
     year.long_name = "part of the year that is averaged over"
     year[...] = np.array("January to December", object)
@@ -137,15 +141,15 @@ def _grid_mapping(grid: Grid) -> dict[str, Any]:
 
 
 def _declare(file: Any, staged: StagedLayer, chunk: tuple[int, int]) -> Any:
-    layer, by_month = staged.layer, staged.layer.bands == "month"
+    layer, banded = staged.layer, staged.layer.count > 1
     variable = file.createVariable(
         layer.name,
         layer_dtype(layer),
-        ("month", "latitude", "longitude") if by_month else ("latitude", "longitude"),
+        layer.dimensions,
         zlib=True,
         complevel=1,
         shuffle=True,
-        chunksizes=(1, *chunk) if by_month else chunk,
+        chunksizes=(1, *chunk) if banded else chunk,
         chunk_cache=CHUNK_CACHE,
         fill_value=False if layer.is_flags else np.float32(np.nan),
     )
@@ -161,6 +165,7 @@ def _attributes(layer: LayerVariable, staged: StagedLayer) -> dict[str, Any]:
         "units": layer.units,
         "cell_methods": layer.cell_methods,
         "grid_mapping": "crs",
+        "comment": layer.caution,
     }
     if layer.bands == "year" and layer.cell_methods.startswith("month:"):
         attributes["coordinates"] = "year"

@@ -52,8 +52,7 @@ def needed_bytes(grid: Grid, layers: Iterable[str]) -> int:
     total = FILE_OVERHEAD
     for name in layers:
         layer = layer_variables()[name]
-        bands = 12 if layer.bands == "month" else 1
-        cells = grid.rows * grid.columns * bands * (2 if layer.is_flags else 4)
+        cells = grid.rows * grid.columns * layer.count * (2 if layer.is_flags else 4)
         total += round(cells * (4 / 3 + 4 / 3 + 1)) + FILE_OVERHEAD
     return total
 

@@ -1,0 +1,116 @@
+"""A panel that is turned twice a year: which months belong together, and how to tilt it in each.
+
+The year is cut into two runs of neighbouring months. All 66 cuts are compared on every second
+candidate orientation; the best cut is then searched and refined on all of them.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gridcool.engine.optimum import find_best
+from gridcool.engine.orientations import Orientations
+
+FloatArray = NDArray[np.floating]
+
+
+@dataclass(frozen=True)
+class TwoSeasons:
+    """The best two-position year of each cell; the season of low sun comes first.
+
+    Attributes
+    ----------
+    flux : array, shape (cells,)
+        Annual mean flux, W m-2.
+    tilt, azimuth : array, shape (2, cells)
+        Degrees.
+    start : array, shape (2, cells)
+        Month (1 to 12) in which each season begins.
+    """
+
+    flux: FloatArray
+    tilt: FloatArray
+    azimuth: FloatArray
+    start: FloatArray
+
+
+def month_cuts() -> list[tuple[int, int]]:
+    """First month (0 to 11) and length of the shorter season of every way to cut the year."""
+    return [(start, length) for length in range(1, 7) for start in range(12 if length < 6 else 6)]
+
+
+def best_cut(monthly: FloatArray) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+    """The cut of the year that brings most.
+
+    Parameters
+    ----------
+    monthly : array, shape (12, cells, orientations)
+        Each month's share of the annual mean flux.
+
+    Returns
+    -------
+    start, length : array of int, shape (cells,)
+        First month (0 to 11) and number of months of one of the two seasons.
+    """
+    running = np.concatenate([np.zeros_like(monthly[:1]), np.cumsum(monthly, axis=0)])
+    whole = running[12]
+    best = np.full(whole.shape[0], -np.inf, np.float32)
+    start = np.zeros(whole.shape[0], np.intp)
+    length = np.zeros(whole.shape[0], np.intp)
+    for first, months in month_cuts():
+        last = first + months
+        season = running[min(last, 12)] - running[first]
+        if last > 12:
+            season = season + running[last - 12]
+        value = season.max(axis=1) + (whole - season).max(axis=1)
+        better = value > best
+        best = np.where(better, value, best)
+        start = np.where(better, first, start)
+        length = np.where(better, months, length)
+    return start, length
+
+
+def season_mask(start: NDArray[np.intp], length: NDArray[np.intp]) -> NDArray[np.float32]:
+    """One in the months of the season, zero elsewhere, shape (12, cells)."""
+    months = np.arange(12)[:, None]
+    return ((months - start) % 12 < length).astype(np.float32)
+
+
+def two_seasons(
+    fluxes: tuple[FloatArray, FloatArray],
+    start: NDArray[np.intp],
+    length: NDArray[np.intp],
+    orientations: Orientations,
+    *,
+    northern: bool,
+) -> TwoSeasons:
+    """Read off the best orientations of both seasons.
+
+    Parameters
+    ----------
+    fluxes : two arrays, shape (cells, orientations)
+        What each season brings to the annual mean flux, the cut's own season first.
+    start, length : array of int, shape (cells,)
+        From `best_cut`.
+    orientations : Orientations
+    northern : bool
+        Whether the cells lie north of the equator, so that low sun stands in the south.
+    """
+    found = [find_best(flux, orientations) for flux in fluxes]
+    total = sum(best.value(flux) for best, flux in zip(found, fluxes, strict=True))
+    begins = (start + 1, (start + length) % 12 + 1)
+    towards_sun = [best.north * (-1 if northern else 1) for best in found]
+    swap = towards_sun[1] > towards_sun[0]
+
+    def ordered(first: FloatArray, second: FloatArray) -> FloatArray:
+        return np.stack([np.where(swap, second, first), np.where(swap, first, second)])
+
+    return TwoSeasons(
+        flux=np.asarray(total),
+        tilt=ordered(found[0].tilt, found[1].tilt),
+        azimuth=ordered(found[0].azimuth, found[1].azimuth),
+        start=ordered(*(np.asarray(month, np.float32) for month in begins)),
+    )
