@@ -9,7 +9,6 @@ from __future__ import annotations
 import difflib
 import warnings
 from dataclasses import dataclass
-from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -19,18 +18,16 @@ import shapely
 from exactextract import exact_extract
 from exactextract.raster import NumPyRasterSource
 from numpy.typing import NDArray
-from pyproj import Transformer
 from pyproj.exceptions import ProjError
 from shapely import affinity
 from shapely.geometry.base import BaseGeometry
 
 from gridcool.errors import InputDataError, SettingsError
-from gridcool.grid import Bounds, Grid
+from gridcool.grid import Bounds, Grid, zone_area
 
 FloatArray = NDArray[np.floating]
 
 WGS84 = "EPSG:4326"
-EQUAL_AREA = "+proj=cea +ellps=WGS84"
 SEGMENT_DEGREES = 0.05  # edges are bent into the equal-area plane in pieces of this length,
 SEGMENT_SHARE = 1 / 64  # or of this share of the geometry's extent if that is less
 COMMON_NAMES = ("name", "NAME", "Name", "region", "district")
@@ -209,21 +206,21 @@ def coverage(regions: Regions, grid: Grid) -> list[Cover]:
 def ellipsoid_area(geometry: BaseGeometry) -> float:
     """Area on the WGS 84 ellipsoid of a geometry with straight edges in degrees, m2.
 
-    The edges are followed in short pieces into a cylindrical equal-area plane (Snyder 1987).
+    The edges are followed in short pieces into the cylindrical equal-area plane whose coordinates
+    are the share of the circle and the area between the equator and the parallel. It knows no seam
+    in longitude, so a geometry may run past 180°.
     """
     if geometry.is_empty:
         return 0.0
-    project = _equal_area().transform
     west, south, east, north = geometry.bounds
     piece = min(SEGMENT_DEGREES, SEGMENT_SHARE * max(east - west, north - south))
     fine = shapely.segmentize(geometry, piece)
-    plane = shapely.transform(fine, lambda xy: np.column_stack(project(xy[:, 0], xy[:, 1])))
-    return float(plane.area)
+    return float(shapely.transform(fine, _equal_area).area)
 
 
-@cache
-def _equal_area() -> Transformer:
-    return Transformer.from_crs(WGS84, EQUAL_AREA, always_xy=True)
+def _equal_area(degrees: NDArray[np.float64]) -> NDArray[np.float64]:
+    longitude, latitude = degrees[:, 0], degrees[:, 1]
+    return np.column_stack([longitude / 360.0, zone_area(np.zeros_like(latitude), latitude)])
 
 
 def _names(frame: Any, path: Path, name: str | None) -> list[str]:

@@ -1,0 +1,450 @@
+"""Regions: areas and coverage on the ellipsoid, whatever was drawn and however it was stored."""
+
+from __future__ import annotations
+
+import itertools
+import json
+import math
+from pathlib import Path
+from typing import Any
+
+import geopandas as gpd
+import numpy as np
+import pytest
+import shapely
+from pyproj import Geod
+from shapely import MultiPolygon, Point, Polygon, box
+
+from gridcool.errors import InputDataError, SettingsError
+from gridcool.grid import Bounds, Grid, grid_from_bounds
+from gridcool.planning.regions import (
+    Cover,
+    Regions,
+    box_regions,
+    coverage,
+    ellipsoid_area,
+    read_regions,
+)
+
+GLOBE = Bounds(-180.0, -90.0, 180.0, 90.0)
+DISTRICTS = Path(__file__).parents[1] / "data_demo" / "districts.geojson"
+GEOD = Geod(ellps="WGS84")
+Ring = list[tuple[float, float]]
+
+
+def geodesic_area(ring: Ring, *holes: Ring, once_round: bool = False) -> float:
+    """A ring minus its holes, each followed in short pieces by geodesics, m2.
+
+    A ring that goes ``once_round`` the globe has no edge back; it closes one turn further on.
+    """
+    end = (ring[0][0] + 360.0, ring[0][1]) if once_round else ring[0]
+    line = shapely.LineString([*ring, end])
+    west, south, east, north = line.bounds
+    piece = max(east - west, north - south) / 5000
+    longitude, latitude = shapely.get_coordinates(shapely.segmentize(line, piece)).T
+    area = abs(float(GEOD.polygon_area_perimeter(longitude[:-1], latitude[:-1])[0]))
+    return area - sum(geodesic_area(hole) for hole in holes)
+
+
+def geojson(path: Path, *polygons: list[Ring], names: list[Any] | None = None) -> Path:
+    """A file that keeps the polygons exactly as drawn."""
+    features = [
+        {
+            "type": "Feature",
+            "properties": {} if names is None else {"name": names[number]},
+            "geometry": {
+                "type": "Polygon",
+                "coordinates": [[*ring, ring[0]] for ring in polygon],
+            },
+        }
+        for number, polygon in enumerate(polygons)
+    ]
+    path.write_text(json.dumps({"type": "FeatureCollection", "features": features}))
+    return path
+
+
+def stored(path: Path, names: list[Any], shapes: list[Any], crs: str = "EPSG:4326") -> Path:
+    gpd.GeoDataFrame({"name": names}, geometry=shapes, crs=crs).to_file(path)
+    return path
+
+
+def only(regions: Regions, grid: Grid) -> Cover:
+    (cover,) = coverage(regions, grid)
+    return cover
+
+
+BOX = [(10.0, 20.0), (15.0, 20.0), (15.0, 26.0), (10.0, 26.0)]
+TRIANGLE = [(0.0, 10.0), (8.0, 17.0), (-3.0, 21.0)]
+SPECK = [(12.31, 47.12), (12.34, 47.13), (12.32, 47.16)]
+ARCTIC = [(30.0, 75.0), (70.0, 77.0), (50.0, 84.0)]
+HOLE = [(11.0, 21.0), (12.5, 21.5), (13.0, 24.0)]
+PLAIN = {"box": [BOX], "triangle": [TRIANGLE], "speck": [SPECK], "arctic": [ARCTIC]}
+
+
+@pytest.mark.parametrize("rings", [*PLAIN.values(), [BOX, HOLE]], ids=[*PLAIN, "hole"])
+def test_areas_are_those_of_the_ellipsoid(rings: list[Ring], tmp_path: Path) -> None:
+    exact = geodesic_area(*rings)
+    regions = read_regions(geojson(tmp_path / "r.geojson", rings), None)
+    assert ellipsoid_area(regions.geometries[0]) == pytest.approx(exact, rel=1e-6)
+    assert regions.notes == ()
+    cover = only(regions, grid_from_bounds(GLOBE, 1.0))
+    assert cover.area == pytest.approx(exact, rel=1e-6)
+    assert cover.areas.sum() == pytest.approx(exact, rel=1e-6)
+    # Plain degrees times the size of a degree at the mean latitude are another figure.
+    polygon = Polygon(rings[0], rings[1:])
+    naive = polygon.area * math.cos(math.radians(polygon.centroid.y)) * 111_195.0**2
+    assert naive != pytest.approx(exact, rel=1e-4)
+
+
+def test_long_edges_are_straight_in_degrees_not_geodesics() -> None:
+    shape = Polygon([(0, 40), (60, 40), (60, 60), (0, 60)])
+    exact = geodesic_area(shapely.get_coordinates(shape).tolist()[:-1])
+    assert ellipsoid_area(shape) == pytest.approx(exact, rel=1e-6)
+    corners = abs(GEOD.geometry_area_perimeter(shape)[0])
+    assert corners != pytest.approx(exact, rel=1e-2)
+
+
+ACROSS = {
+    "short way round": [[(178, -5), (-178, -5), (-177, 6), (179, 6)]],
+    "past 180": [[(178, -5), (182, -5), (183, 6), (179, 6)]],
+    "before -180": [[(-182, -5), (-178, -5), (-177, 6), (-181, 6)]],
+    "clockwise": [[(179, 6), (-177, 6), (-178, -5), (178, -5)]],
+}
+ACROSS_THERE = [(178.0, -5.0), (182.0, -5.0), (183.0, 6.0), (179.0, 6.0)]
+
+
+@pytest.mark.parametrize("rings", ACROSS.values(), ids=ACROSS)
+def test_polygons_across_the_antimeridian(rings: list[Ring], tmp_path: Path) -> None:
+    regions = read_regions(geojson(tmp_path / "r.geojson", rings), None)
+    (shape,) = regions.geometries
+    assert shape.bounds == (-180, -5, 180, 6)
+    assert shape.geom_type == "MultiPolygon"
+    cover = only(regions, grid_from_bounds(GLOBE, 1.0))
+    assert cover.area == pytest.approx(geodesic_area(ACROSS_THERE), rel=1e-6)
+    assert cover.areas.sum() == pytest.approx(cover.area, rel=1e-9)
+    columns = set((cover.cells % 360).tolist())
+    assert columns == {0, 1, 2, 358, 359}
+
+
+def test_already_split_at_the_antimeridian(tmp_path: Path) -> None:
+    parts = [
+        Polygon([(178, -5), (180, -5), (180, 6), (179, 6)]),
+        Polygon([(-180, -5), (-178, -5), (-177, 6), (-180, 6)]),
+    ]
+    path = stored(tmp_path / "r.gpkg", ["a"], [MultiPolygon(parts)])
+    cover = only(read_regions(path, None), grid_from_bounds(GLOBE, 1.0))
+    assert cover.area == pytest.approx(geodesic_area(ACROSS_THERE), rel=1e-6)
+
+
+def test_grid_that_runs_past_180(tmp_path: Path) -> None:
+    regions = read_regions(geojson(tmp_path / "r.geojson", ACROSS["short way round"]), None)
+    past = Grid(170.0, 10.0, 1.0, 1.0, 20, 20)
+    cover, everywhere = only(regions, past), only(regions, grid_from_bounds(GLOBE, 1.0))
+    assert cover.areas.sum() == pytest.approx(cover.area, rel=1e-9)
+    assert set((cover.cells % 20).tolist()) == {8, 9, 10, 11, 12}
+    by_place = {
+        (10 - cell // 20, 170 + cell % 20): part
+        for cell, part in zip(cover.cells, cover.areas, strict=True)
+    }
+    for cell, part in zip(everywhere.cells, everywhere.areas, strict=True):
+        place = 90 - cell // 360, (-180 + cell % 360) % 360
+        assert by_place[place] == pytest.approx(part, rel=1e-6)
+    assert len(by_place) == len(everywhere.cells)
+    across = box(178, -5, 183, 6)
+    assert ellipsoid_area(across) == pytest.approx(ellipsoid_area(box(8, -5, 13, 6)), rel=1e-12)
+
+
+def test_grid_from_0_to_360(tmp_path: Path) -> None:
+    regions = read_regions(
+        geojson(tmp_path / "r.geojson", [[(-2, 1), (2, 1), (2, 3), (-2, 3)]]), None
+    )
+    cover = only(regions, grid_from_bounds(Bounds(0.0, -90.0, 360.0, 90.0), 1.0))
+    assert set((cover.cells % 360).tolist()) == {358, 359, 0, 1}
+    assert cover.areas.sum() == pytest.approx(cover.area, rel=1e-9)
+
+
+@pytest.mark.parametrize("pole", [1, -1])
+def test_ring_round_a_pole(pole: int, tmp_path: Path) -> None:
+    longitudes = np.arange(-175.0, 180.0, 5.0)
+    ring = [(x, pole * (72 + 4 * math.sin(math.radians(3 * x)))) for x in longitudes]
+    exact = geodesic_area(ring, once_round=True)
+    cover = only(
+        read_regions(geojson(tmp_path / "r.geojson", [ring]), None), grid_from_bounds(GLOBE, 1.0)
+    )
+    assert cover.area == pytest.approx(exact, rel=1e-6)
+    assert cover.areas.sum() == pytest.approx(cover.area, rel=1e-9)
+    rows = set((cover.cells // 360).tolist())
+    assert (0 if pole > 0 else 179) in rows
+    assert not rows & set(range(60, 120))
+
+
+def test_pole_drawn_along_the_edge_of_the_map(tmp_path: Path) -> None:
+    ring = [(-180.0, -90.0), (180.0, -90.0), (180.0, -75.0), (0.0, -70.0), (-180.0, -75.0)]
+    cover = only(
+        read_regions(geojson(tmp_path / "r.geojson", [ring]), None), grid_from_bounds(GLOBE, 1.0)
+    )
+    coast = [(-180.0, -75.0), (0.0, -70.0)]
+    assert cover.area == pytest.approx(geodesic_area(coast, once_round=True), rel=1e-6)
+
+
+def test_bow_tie_becomes_its_two_triangles(tmp_path: Path) -> None:
+    regions = read_regions(
+        geojson(tmp_path / "r.geojson", [[(0, 0), (4, 4), (4, 0), (0, 4)]]), None
+    )
+    exact = geodesic_area([(0, 0), (2, 2), (0, 4)]) + geodesic_area([(4, 0), (4, 4), (2, 2)])
+    assert ellipsoid_area(regions.geometries[0]) == pytest.approx(exact, rel=1e-6)
+
+
+def test_overlapping_parts_and_repeated_names_count_once(tmp_path: Path) -> None:
+    overlapping = MultiPolygon([box(0, 0, 2, 2), box(1, 1, 3, 3)])
+    path = stored(
+        tmp_path / "r.gpkg", ["a", "b", "a"], [overlapping, box(9, 9, 10, 10), box(0, 0, 2, 2)]
+    )
+    regions = read_regions(path, "name")
+    assert regions.names == ("a", "b")
+    assert regions.geometries[0].area == pytest.approx(7.0)
+
+
+def test_smaller_than_a_cell() -> None:
+    grid = grid_from_bounds(GLOBE, 1.0)
+    cover = only(Regions(("speck",), (Polygon(SPECK),)), grid)
+    assert cover.cells.tolist() == [(90 - 48) * 360 + 180 + 12]
+    assert cover.areas.sum() == pytest.approx(geodesic_area(SPECK), rel=1e-6)
+
+
+def test_outside_and_half_outside_the_grid() -> None:
+    grid = Grid(0.0, 10.0, 1.0, 1.0, 10, 10)
+    regions = Regions(("out", "half"), (box(40, 40, 42, 42), box(8, 2, 12, 4)))
+    out, half = coverage(regions, grid)
+    assert out.cells.size == out.areas.size == 0
+    assert out.area == pytest.approx(
+        geodesic_area([(40, 40), (42, 40), (42, 42), (40, 42)]), rel=1e-6
+    )
+    assert half.areas.sum() == pytest.approx(half.area / 2, rel=1e-6)
+    assert half.cells.tolist() == [68, 69, 78, 79]  # rows 6 and 7 from the north
+
+
+@pytest.mark.parametrize(("size", "resolution"), [(10.0, 2.0), (7.0, 1.0)])
+def test_boxes_share_out_the_globe(size: float, resolution: float) -> None:
+    grid = grid_from_bounds(GLOBE, resolution)
+    found = shared_out(box_regions(GLOBE, size), grid)
+    full = np.repeat(grid.row_areas(), grid.columns)
+    assert found == pytest.approx(full, rel=1e-6)
+    assert found.sum() == pytest.approx(full.sum(), rel=1e-9)
+
+
+def test_meridians_share_out_cells_exactly() -> None:
+    west = np.linspace(-180, 180, 15)
+    lunes = tuple(box(x, -90, y, 90) for x, y in itertools.pairwise(west))
+    grid = grid_from_bounds(GLOBE, 5.0)
+    found = shared_out(Regions(tuple("abcdefghijklmn"), lunes), grid)
+    assert found == pytest.approx(np.repeat(grid.row_areas(), grid.columns), rel=1e-6)
+
+
+def shared_out(regions: Regions, grid: Grid) -> np.ndarray:
+    """What all regions together cover of each cell, m2."""
+    found = np.zeros(grid.rows * grid.columns)
+    for cover in coverage(regions, grid):
+        np.add.at(found, cover.cells, cover.areas)
+    return found
+
+
+def test_oblique_borders_share_out_the_globe() -> None:
+    rng = np.random.default_rng(1)
+    seeds = np.column_stack([rng.uniform(-180, 180, 12), rng.uniform(-90, 90, 12)])
+    globe = box(-180, -90, 180, 90)
+    parts = shapely.voronoi_polygons(shapely.MultiPoint(seeds), extend_to=globe).geoms
+    shapes = tuple(shapely.intersection(part, globe) for part in parts)
+    regions = Regions(tuple(f"{number}" for number in range(len(shapes))), shapes)
+    grid = grid_from_bounds(GLOBE, 1.0)
+    found, full = shared_out(regions, grid), np.repeat(grid.row_areas(), grid.columns)
+    # Within a cell a share of degrees is not quite a share of the area.
+    assert found == pytest.approx(full, rel=5e-4)
+    assert found.sum() == pytest.approx(full.sum(), rel=1e-9)
+
+
+def test_boxes_are_named_after_their_south_western_corner() -> None:
+    regions = box_regions(Bounds(170.0, -5.0, 190.0, 5.0), 5.0)
+    assert regions.names == tuple(
+        f"{y} {x}" for y in ("05S", "00N") for x in ("170E", "175E", "180W", "175W")
+    )
+    assert regions.geometries[2].bounds == (-180, -5, -175, 0)
+    assert box_regions(Bounds(-112.5, 2.5, -110.0, 5.0), 2.5).names == ("02.5N 112.5W",)
+
+
+def test_boxes_on_a_grid_that_starts_inside_one() -> None:
+    """Longitudes labelled 0, 0.25, … start an eighth of a degree west of Greenwich."""
+    bounds = Bounds(-0.125, -90.0, 359.875, 90.0)
+    regions = box_regions(bounds, 5.0)
+    assert len(regions.names) == len(set(regions.names)) == 72 * 36
+    areas = [ellipsoid_area(shape) for shape in regions.geometries]
+    assert sum(areas) == pytest.approx(510_065_621_724_079.0, rel=1e-9)
+    assert regions.geometries[regions.names.index("00N 005W")].area == pytest.approx(25.0)
+
+
+def test_boxes_end_with_the_grid() -> None:
+    regions = box_regions(Bounds(1.0, -3.0, 9.0, 2.0), 5.0)
+    assert shapely.union_all(regions.geometries).bounds == (1, -3, 9, 2)
+
+
+@pytest.mark.parametrize("suffix", ["gpkg", "shp", "geojson", "fgb"])
+def test_another_reference_system_is_the_same_region(suffix: str, tmp_path: Path) -> None:
+    shapes = [box(10, 40, 12, 43), Polygon(BOX, [HOLE])]
+    degrees = gpd.GeoDataFrame({"name": ["a", "b"]}, geometry=shapes, crs="EPSG:4326")
+    path = tmp_path / f"r.{suffix}"
+    crs = "EPSG:4326" if suffix == "geojson" else "EPSG:3857"
+    degrees.to_crs(crs).to_file(path)
+    regions = read_regions(path, "name")
+    covers = coverage(regions, grid_from_bounds(GLOBE, 1.0))
+    expected = coverage(Regions(("a", "b"), tuple(shapes)), grid_from_bounds(GLOBE, 1.0))
+    by_name = {cover.name: cover for cover in covers}
+    for other in expected:
+        found = by_name[other.name]
+        assert found.area == pytest.approx(other.area, rel=1e-6)
+        # There and back moves edges by rounding; a sliver of a neighbouring cell may be touched.
+        parts = dict(zip(found.cells.tolist(), found.areas.tolist(), strict=True))
+        for cell, part in zip(other.cells.tolist(), other.areas.tolist(), strict=True):
+            assert parts.pop(cell, 0.0) == pytest.approx(part, rel=1e-6)
+        assert sum(parts.values()) < 1e-6 * other.area
+
+
+def test_circle_round_the_pole_in_a_polar_projection(tmp_path: Path) -> None:
+    """In the polar stereographic plane a parallel is a circle; its zone is known exactly."""
+    plane = "+proj=stere +lat_0=90 +lat_ts=70 +ellps=WGS84 +type=crs"
+    parallel = gpd.GeoSeries([Point(0, 80)], crs="EPSG:4326").to_crs(plane).iloc[0]
+    circle = Point(0, 0).buffer(math.hypot(parallel.x, parallel.y), quad_segs=4000)
+    path = stored(tmp_path / "r.gpkg", ["cap"], [circle], crs=plane)
+    cover = only(read_regions(path, None), grid_from_bounds(GLOBE, 1.0))
+    assert cover.area == pytest.approx(
+        grid_from_bounds(GLOBE, 1.0).row_areas()[:10].sum() * 360, rel=1e-6
+    )
+
+
+def shapefile_without_reference(path: Path, shape: Any) -> Path:
+    stored(path, ["a"], [shape])
+    path.with_suffix(".prj").unlink()
+    return path
+
+
+def test_degrees_are_assumed_without_a_reference_system(tmp_path: Path) -> None:
+    path = shapefile_without_reference(tmp_path / "bare.shp", box(10, 20, 15, 26))
+    regions = read_regions(path, "name")
+    assert regions.geometries[0].area == pytest.approx(30.0)
+    assert regions.notes == (
+        "bare.shp states no coordinate reference system; degrees are assumed.",
+    )
+
+
+def test_metres_without_a_reference_system_are_refused(tmp_path: Path) -> None:
+    path = shapefile_without_reference(tmp_path / "bare.shp", box(500000, 0, 600000, 100000))
+    with pytest.raises(InputDataError, match="states no coordinate reference system"):
+        read_regions(path, "name")
+
+
+def test_swapped_axes_are_refused(tmp_path: Path) -> None:
+    path = geojson(tmp_path / "r.geojson", [[(20, 110), (26, 110), (26, 115)]])
+    with pytest.raises(InputDataError, match="latitudes beyond the poles"):
+        read_regions(path, None)
+
+
+def unreadable(kind: str, folder: Path) -> Path:
+    path = folder / f"r.{kind}"
+    if kind == "txt":
+        path.write_text("north of the river\n")
+    elif kind == "csv":
+        path.write_text("name,people\na,1\n")
+    elif kind == "geojson":
+        path.write_text('{"type": "FeatureCollection", "features": [')
+    elif kind == "gpkg":
+        stored(path, ["a"], [box(0, 0, 1, 1)])
+        path.write_bytes(path.read_bytes()[:20000])
+    elif kind == "points.gpkg":
+        stored(path, ["a", "b"], [Point(0, 0), None])
+    elif kind == "empty.geojson":
+        path.write_text('{"type": "FeatureCollection", "features": []}')
+    elif kind == "folder":
+        path.mkdir()
+    return path
+
+
+@pytest.mark.parametrize(
+    ("kind", "words"),
+    [
+        ("missing", "does not exist; check .regions. path"),
+        ("txt", "cannot be read as polygons"),
+        ("csv", "table without geometries"),
+        ("geojson", "cannot be read as polygons"),
+        ("gpkg", "cannot be read as polygons"),
+        ("folder", "cannot be read as polygons"),
+        ("points.gpkg", "holds no polygons"),
+        ("empty.geojson", "holds no polygons"),
+    ],
+)
+def test_files_without_polygons_are_refused(kind: str, words: str, tmp_path: Path) -> None:
+    path = unreadable(kind, tmp_path)
+    with pytest.raises(InputDataError, match=words) as caught:
+        read_regions(path, None)
+    assert str(path) in str(caught.value)
+    assert caught.value.exit_code == 3
+
+
+def test_missing_attribute_names_the_nearest(tmp_path: Path) -> None:
+    path = stored(tmp_path / "r.gpkg", ["a"], [box(0, 0, 1, 1)])
+    with pytest.raises(SettingsError, match="has no attribute nane; did you mean name"):
+        read_regions(path, "nane")
+    with pytest.raises(SettingsError, match="has no attribute province; it has name"):
+        read_regions(path, "province")
+
+
+def test_names_that_are_missing_or_numbers(tmp_path: Path) -> None:
+    shapes = [box(x, 0, x + 1, 1) for x in range(3)]
+    path = stored(tmp_path / "r.gpkg", ["a", None, "c"], shapes)
+    assert read_regions(path, None).names == ("a", "Unnamed 2", "c")
+    path = stored(tmp_path / "n.gpkg", [7, 8, 9], shapes)
+    assert read_regions(path, "name").names == ("7", "8", "9")
+    rings = [[[(x, 0), (x + 1, 0), (x + 1, 1)]] for x in range(2)]
+    assert read_regions(geojson(tmp_path / "r.geojson", *rings), None).names == (
+        *("Region 1", "Region 2"),
+    )
+
+
+def test_rows_without_area_are_kept_and_noted(tmp_path: Path) -> None:
+    path = stored(tmp_path / "r.gpkg", ["a", "b"], [box(0, 0, 1, 1), None])
+    regions = read_regions(path, None)
+    assert regions.notes == ("b in r.gpkg has no area.",)
+    _, empty = coverage(regions, grid_from_bounds(GLOBE, 10.0))
+    assert (empty.name, empty.area, empty.cells.size) == ("b", 0.0, 0)
+
+
+def test_the_first_layer_with_polygons_is_used_and_named(tmp_path: Path) -> None:
+    path = tmp_path / "r.gpkg"
+    for layer, shape in (
+        ("wells", Point(0, 0)),
+        ("old", box(0, 0, 1, 1)),
+        ("new", box(0, 0, 2, 2)),
+    ):
+        gpd.GeoDataFrame({"name": [layer]}, geometry=[shape], crs="EPSG:4326").to_file(
+            path, layer=layer
+        )
+    regions = read_regions(path, None)
+    assert regions.names == ("old",)
+    assert regions.notes == ("r.gpkg has several layers of polygons; old is used.",)
+
+
+def test_districts_of_the_demonstration() -> None:
+    """Their borders follow whole degrees, so cells by their centres are an independent count."""
+    regions = read_regions(DISTRICTS, "district")
+    assert regions.notes == ()
+    assert len(regions.names) == len(set(regions.names)) == 11
+    grid = grid_from_bounds(GLOBE, 1.0)
+    longitude, latitude = np.meshgrid(grid.longitudes, grid.latitudes)
+    row_area = np.repeat(grid.row_areas(), grid.columns)
+    across = []
+    for shape, cover in zip(regions.geometries, coverage(regions, grid), strict=True):
+        inside = np.flatnonzero(shapely.contains_xy(shape, longitude, latitude))
+        assert np.sort(cover.cells).tolist() == inside.tolist()
+        assert cover.areas == pytest.approx(row_area[cover.cells], rel=1e-6)
+        assert cover.area == pytest.approx(row_area[inside].sum(), rel=1e-9)
+        if {0, 359} <= set((inside % 360).tolist()):
+            across.append(cover.name)
+    assert len(across) == 2
