@@ -72,9 +72,10 @@ class Outcome:
 
 @dataclass(frozen=True)
 class Expectations:
-    """Means over the cloud distribution; e is the escape E_d of light on the ground.
+    """Means over the cloud distribution of products of k, s and e.
 
-    k: global transmission, s: beam transmission on the way down, and again on the way up.
+    k: global transmission, s: beam transmission on the way down, and again on the way up, e: the
+    escape E_d of light on the ground.
     """
 
     k: Array
@@ -83,18 +84,17 @@ class Expectations:
     k_e: Array
     s_e: Array
     ss_e: Array
-    e: Array
 
 
 def expectations(cell: Cell, sky: Sky, t_d: Array, r_d: Array) -> Expectations:
     """The needed means for every (month, hour bin)."""
     cloud = np.asarray(cell.cloud, dtype=float).reshape(12, -1)
-    means = np.empty((7, *cloud.shape))
+    means = np.empty((6, *cloud.shape))
     for month, hour in np.ndindex(*cloud.shape):
         weight, n = cloud_classes(float(cloud[month, hour]), sky.concentration, CLOUD_CLASSES)
         ground_and_air = float(cell.albedo[month]), float(t_d[month]), float(r_d[month])
         k, s, e = moment_of_sky(n, *ground_and_air, sky)
-        terms = (k, s, s * s, k * e, s * e, s * s * e, e)
+        terms = (k, s, s * s, k * e, s * e, s * s * e)
         means[:, month, hour] = [np.sum(weight * term) for term in terms]
     return Expectations(*means)
 
