@@ -1,0 +1,198 @@
+"""The region table, every column by hand on a grid of three by three cells."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from gridcool.planning.ranking import COLUMNS, mean_orientation, region_table, weighted_percentile
+from gridcool.planning.regions import Cover
+
+NAN = math.nan
+LAYERS = {
+    "rejected_flux": np.array([[100, 120, NAN], [80, 90, 110], [60, 70, 50]], np.float32),
+    "tilt": np.array([[30, 30, NAN], [20, 20, 10], [0, 40, 5]], np.float32),
+    "azimuth": np.array([[180, 180, NAN], [180, 0, 90], [NAN, 90, 0]], np.float32),
+}
+KM2 = 1e6
+
+
+def cover(name: str, *cells: tuple[int, float], outside: float = 0.0) -> Cover:
+    """A region of cells (index, km2) and some km2 outside the grid."""
+    areas = np.array([area for _, area in cells]) * KM2
+    numbers = np.array([cell for cell, _ in cells], np.int64)
+    return Cover(name, float(areas.sum()) + outside * KM2, numbers, areas)
+
+
+# The top row: 1 km2 with 100, 3 km2 with 120, 2 km2 without a result, 2 km2 outside the grid.
+NORTH = cover("north", (0, 1.0), (1, 3.0), (2, 2.0), outside=2.0)
+# Equal parts of two cells that face each other.
+MIDDLE = cover("middle", (3, 2.0), (4, 2.0))
+VOID = cover("void", (2, 2.0))
+
+
+def test_every_column_by_hand() -> None:
+    frame = region_table(LAYERS, [MIDDLE, NORTH], ground_cover=0.5)
+    assert tuple(frame.columns) == COLUMNS
+    assert frame["region"].tolist() == ["north", "middle"]
+    north, middle = frame.to_dict("records")
+    assert north == {
+        "rank": 1,
+        "region": "north",
+        "area_km2": pytest.approx(8.0),
+        "eligible_km2": pytest.approx(4.0),
+        "eligible_share": pytest.approx(0.5),
+        "rejected_flux_mean": pytest.approx((100 * 1 + 120 * 3) / 4),
+        # Values stand at the middle of their weights, 0.5 and 2.5 of 4.
+        "rejected_flux_p10": pytest.approx(100.0),  # 0.4 of 4: before the first
+        "rejected_flux_p50": pytest.approx(115.0),  # 2.0 of 4: three quarters of the way
+        "rejected_flux_p90": pytest.approx(120.0),  # 3.6 of 4: after the last
+        "tilt": pytest.approx(30.0),
+        "azimuth": pytest.approx(180.0),
+        "panel_km2": pytest.approx(2.0),
+        "rejected_power_tw": pytest.approx(115.0 * 2e6 / 1e12),
+    }
+    assert middle == {
+        "rank": 2,
+        "region": "middle",
+        "area_km2": pytest.approx(4.0),
+        "eligible_km2": pytest.approx(4.0),
+        "eligible_share": pytest.approx(1.0),
+        "rejected_flux_mean": pytest.approx(85.0),
+        "rejected_flux_p10": pytest.approx(80.0),
+        "rejected_flux_p50": pytest.approx(85.0),
+        "rejected_flux_p90": pytest.approx(90.0),
+        "tilt": pytest.approx(0.0, abs=1e-6),  # north and south cancel
+        "azimuth": pytest.approx(NAN, nan_ok=True),
+        "panel_km2": pytest.approx(2.0),
+        "rejected_power_tw": pytest.approx(85.0 * 2e6 / 1e12),
+    }
+
+
+def test_only_eligible_cells_count() -> None:
+    eligible = np.ones((3, 3), bool)
+    eligible[0, 1] = False
+    frame = region_table(LAYERS, [NORTH, MIDDLE], ground_cover=0.3, eligible=eligible)
+    north = frame.set_index("region").loc["north"]
+    assert north["rank"] == 1
+    assert north["eligible_km2"] == pytest.approx(1.0)
+    assert north["eligible_share"] == pytest.approx(1 / 8)
+    assert north["rejected_flux_mean"] == pytest.approx(100.0)
+    assert north["rejected_flux_p90"] == pytest.approx(100.0)
+    assert north["panel_km2"] == pytest.approx(0.3)
+    # What has no result stays out, whatever the mask says.
+    everything = region_table(LAYERS, [NORTH], ground_cover=0.3, eligible=np.ones((3, 3), bool))
+    assert everything["eligible_km2"].tolist() == pytest.approx([4.0])
+
+
+def test_nothing_eligible_comes_last_without_a_rank() -> None:
+    away = Cover("away", 5 * KM2, np.zeros(0, np.int64), np.zeros(0))
+    nowhere = Cover("nowhere", 0.0, np.zeros(0, np.int64), np.zeros(0))
+    frame = region_table(LAYERS, [VOID, nowhere, MIDDLE, away, NORTH], ground_cover=0.3)
+    assert frame["region"].tolist() == ["north", "middle", "away", "nowhere", "void"]
+    assert frame["rank"].fillna(-1).tolist() == [1, 2, -1, -1, -1]
+    last = frame.set_index("region").loc["void"]
+    assert last["area_km2"] == pytest.approx(2.0)
+    assert last["eligible_km2"] == last["eligible_share"] == 0
+    assert last[["rejected_flux_mean", "tilt", "panel_km2"]].isna().all()
+    assert frame["eligible_share"].notna().all()
+
+
+def test_a_table_without_any_eligible_cell_stays_numeric() -> None:
+    frame = region_table(LAYERS, [VOID], ground_cover=0.3)
+    assert frame["rank"].isna().all()
+    assert frame["rejected_flux_mean"].dtype == float
+    assert frame["tilt"].dtype == float
+
+
+def test_ties_are_in_order_of_name_whatever_the_order_given() -> None:
+    names = ["delta", "alpha", "charlie", "bravo"]
+    covers = [replace(MIDDLE, name=name) for name in names]
+    frame = region_table(LAYERS, [*covers, NORTH], ground_cover=0.3)
+    assert frame["region"].tolist() == ["north", *sorted(names)]
+    assert frame["rank"].tolist() == [1, 2, 3, 4, 5]
+
+
+def test_layers_are_not_touched() -> None:
+    before = {name: values.copy() for name, values in LAYERS.items()}
+    region_table(LAYERS, [NORTH], ground_cover=0.3, eligible=np.zeros((3, 3), bool))
+    for name, values in before.items():
+        np.testing.assert_array_equal(LAYERS[name], values)
+
+
+values_list = st.lists(st.floats(-1e3, 1e3), min_size=1, max_size=30)
+
+
+@given(values_list, st.floats(0, 100), st.floats(1e-3, 1e6))
+def test_percentiles_of_equal_weights_are_hazens(
+    values: list[float], percent: float, weight: float
+) -> None:
+    array = np.array(values)
+    found = weighted_percentile(array, np.full(len(array), weight), percent)
+    expected = np.percentile(array, percent, method="hazen")
+    assert found == pytest.approx(expected, rel=1e-9, abs=1e-6)
+
+
+def test_percentiles_heed_the_weights() -> None:
+    values, weights = np.array([10.0, 20.0, 30.0]), np.array([1.0, 1.0, 8.0])
+    # The middles are 0.5, 1.5 and 6 of 10.
+    assert weighted_percentile(values, weights, 50) == pytest.approx(20 + 10 * 3.5 / 4.5)
+    assert np.percentile(values, 50, method="hazen") == 20  # without them
+    order = [2, 0, 1]
+    assert weighted_percentile(values[order], weights[order], 50) == pytest.approx(
+        20 + 10 * 3.5 / 4.5
+    )
+
+
+@given(
+    st.lists(st.tuples(st.floats(-1e3, 1e3), st.floats(1e-3, 1e3)), min_size=1, max_size=20),
+    st.floats(0, 100),
+    st.floats(0, 100),
+)
+def test_percentiles_rise_and_stay_within_the_values(
+    pairs: list[tuple[float, float]], first: float, second: float
+) -> None:
+    values, weights = np.array(pairs).T
+    low, high = (weighted_percentile(values, weights, p) for p in sorted((first, second)))
+    assert values.min() <= low <= high <= values.max()
+
+
+def orientation(*panels: tuple[float, float, float]) -> tuple[float, float]:
+    """Mean of panels (tilt, azimuth, weight)."""
+    tilt, azimuth, weight = np.array(panels).T
+    return mean_orientation(tilt, azimuth, weight)
+
+
+@pytest.mark.parametrize(
+    ("panels", "expected"),
+    [
+        ([(30, 0, 1), (30, 180, 1)], (0.0, NAN)),
+        ([(25, 90, 2), (25, 270, 2)], (0.0, NAN)),
+        ([(30, 350, 1), (30, 10, 1)], (29.626, 0.0)),  # not 180, as plain means would have it
+        ([(40, 90, 1), (0, NAN, 1)], (20.0, 90.0)),  # a flat panel faces nowhere
+        ([(20, 90, 1), (NAN, NAN, 5)], (20.0, 90.0)),
+        ([(20, 90, 1), (20, 0, 1e-12)], (20.0, 90.0)),
+        ([(0.04, 45, 1)], (0.04, NAN)),
+        ([(NAN, NAN, 1)], (NAN, NAN)),
+        ([(35, 225, 3)], (35.0, 225.0)),
+    ],
+)
+def test_mean_orientation_is_that_of_the_mean_normal(
+    panels: list[tuple[float, float, float]], expected: tuple[float, float]
+) -> None:
+    tilt, azimuth = orientation(*panels)
+    assert tilt == pytest.approx(expected[0], abs=1e-3, nan_ok=True)
+    turn = (azimuth - expected[1] + 180) % 360 - 180
+    assert turn == pytest.approx(0.0 if expected[1] == expected[1] else NAN, abs=1e-6, nan_ok=True)
+
+
+def test_mean_orientation_weighs_by_area() -> None:
+    """Normals of 30° south (weight 3) and 30° north (weight 1): 2 sin 30° over 4 cos 30°."""
+    tilt, azimuth = orientation((30, 180, 3), (30, 0, 1))
+    assert tilt == pytest.approx(math.degrees(math.atan(math.tan(math.radians(30)) / 2)))
+    assert azimuth == pytest.approx(180.0)
