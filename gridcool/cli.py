@@ -111,6 +111,7 @@ class _Bar(_Lines):
     def __init__(self) -> None:
         rich = importlib.import_module("rich.progress")
         console = importlib.import_module("rich.console").Console(stderr=True)
+        self._escape = importlib.import_module("rich.markup").escape
         self._bar = rich.Progress(console=console, transient=True)
         self._task = self._bar.add_task("", total=None)
 
@@ -122,8 +123,9 @@ class _Bar(_Lines):
         self._bar.stop()
 
     def stage(self, text: str) -> None:
-        self._bar.console.print(text, highlight=False)
-        self._bar.reset(self._task, description=text, total=None)
+        # Brackets in a text, such as those of a settings key, are no markup.
+        self._bar.console.print(text, highlight=False, markup=False, soft_wrap=True)
+        self._bar.reset(self._task, description=self._escape(text), total=None)
 
     def advance(self, done: int, total: int) -> None:
         self._bar.update(self._task, completed=done, total=total)
