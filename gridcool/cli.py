@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import argparse
 import importlib
+import json
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -53,9 +54,15 @@ def _parser() -> argparse.ArgumentParser:
     check.set_defaults(command=_check)
     screen = commands.add_parser("screen", help="do the whole job and publish a release")
     screen.set_defaults(command=_screen)
-    for command in (check, screen):
+    cell = commands.add_parser("cell", help="explain one place: where its light goes, and why")
+    cell.set_defaults(command=_cell)
+    for command in (check, screen, cell):
         command.add_argument("settings", type=Path, help="settings file (TOML)")
     screen.add_argument("--quiet", action="store_true", help="print the summary line only")
+    cell.add_argument("latitude", type=float, help="degrees north")
+    cell.add_argument("longitude", type=float, help="degrees east")
+    cell.add_argument("--json", action="store_true", help="print the facts as JSON")
+    cell.add_argument("--figure", type=Path, help="also draw them (.png or .svg)")
     return parser
 
 
@@ -78,6 +85,19 @@ def _screen(options: argparse.Namespace) -> int:
     with _progress(quiet=options.quiet) as progress:
         result = _pipeline().screen(settings, progress)
     for line in result.summary(top=5):
+        print(line)
+    return 0
+
+
+def _cell(options: argparse.Namespace) -> int:
+    facts = _pipeline().cell(_settings(options.settings), options.latitude, options.longitude)
+    page = importlib.import_module("gridcool.products.cell")
+    if options.figure is not None:
+        page.draw_cell(facts, options.figure)
+    if options.json:
+        print(json.dumps(facts, indent=2, ensure_ascii=False))
+        return 0
+    for line in page.cell_lines(facts):
         print(line)
     return 0
 

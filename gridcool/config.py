@@ -127,12 +127,17 @@ class Panel(_Section):
     specular_share: Share = 1.0
     back_reflectance: Share = 0.3
     ground_cover: Annotated[Number, Field(gt=0, le=1)] = 0.3
+    lifetime_years: Annotated[Number, Field(gt=0, le=200)] = 25.0
 
 
 class Worth(_Section):
     """What the flux is worth in other terms."""
 
     carbon_dioxide_ppm: Annotated[Number, Field(gt=150, lt=2000)] = 425.0
+    panel_mass: Annotated[Number, Field(gt=0)] = 10.0
+    embodied_energy: Annotated[Number, Field(ge=0)] = 150.0
+    cost_low: Annotated[Number, Field(ge=0)] = 14.0
+    cost_high: Annotated[Number, Field(ge=0)] = 100.0
 
 
 class Uncertainty(_Section):

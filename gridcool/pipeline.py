@@ -8,7 +8,7 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
-from typing import Protocol
+from typing import Any, Protocol
 
 import dask
 import pandas as pd
@@ -17,15 +17,17 @@ from threadpoolctl import threadpool_limits
 
 from gridcool import __version__
 from gridcool.config import Settings
-from gridcool.engine.blocks import solve
+from gridcool.engine.blocks import explain, solve
 from gridcool.engine.options import Field, InputError, Panel, Sky
-from gridcool.errors import SettingsError
+from gridcool.errors import InputDataError, SettingsError
 from gridcool.grid import Bounds, Grid
 from gridcool.inputs.load import describe, load_inputs, target_grid
 from gridcool.inputs.spec import InputReport, InputSpec
+from gridcool.planning.explanation import EXTRA_LAYERS, cell_facts
 from gridcool.planning.ranking import LAYERS as RANKED_LAYERS
 from gridcool.planning.ranking import region_table
 from gridcool.planning.regions import box_regions, coverage, read_regions
+from gridcool.planning.worth import PanelCosts
 from gridcool.products.layers import write_layers
 from gridcool.products.reading import read_layer
 from gridcool.products.tables import write_region_table
@@ -146,6 +148,67 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
     return ScreenResult(release, output / "current", regions)
 
 
+def cell(settings: Settings, latitude: float, longitude: float) -> dict[str, Any]:
+    """One place explained, as plain facts.
+
+    Raises
+    ------
+    InputDataError
+        If the place lies outside the target grid or nothing is known of it.
+    """
+    specs = specs_of(settings)
+    grid = grid_of(settings, specs)
+    row, column = _cell_at(grid, latitude, longitude)
+    inputs = load_inputs(specs, grid, 1).dataset
+    rows = slice(max(row - 1, 0), min(row + 2, grid.rows))
+    columns = [column + step for step in (-1, 0, 1)]
+    if grid.is_periodic:
+        columns = [each % grid.columns for each in columns]
+    columns = [each for each in columns if 0 <= each < grid.columns]
+    window = inputs.isel(latitude=rows, longitude=columns)
+    with _threads():
+        window = window.compute()
+        options = _engine_options(settings)
+        wanted = (*EXTRA_LAYERS, *settings.layers.extra)
+        layers = solve(window, **options, extra_layers=wanted).compute()
+        here = {"latitude": [row - rows.start], "longitude": [columns.index(column)]}
+        found = explain(window.isel(here), **options)
+    if found is None:
+        raise InputDataError(
+            f"Nothing is known at {latitude:g}, {longitude:g}: the albedo or every irradiance "
+            "estimate is missing there; choose another place or fill the inputs."
+        )
+    facts = cell_facts(layers, here["latitude"][0], here["longitude"][0], found, _costs(settings))
+    elevation = window.get("elevation")
+    height = None if elevation is None else float(elevation.isel(here).values[0, 0])
+    facts["place"]["elevation"] = "taken as sea level" if height is None else f"{height:.0f} m"
+    return {"title": settings.job.name, **facts, "caution": CAUTION}
+
+
+def _cell_at(grid: Grid, latitude: float, longitude: float) -> tuple[int, int]:
+    """Row and column of the cell that holds a place."""
+    bounds = grid.bounds
+    east = bounds.west + (longitude - bounds.west) % 360
+    if not bounds.south <= latitude <= bounds.north or east >= bounds.east:
+        raise InputDataError(
+            f"The place {latitude:g}, {longitude:g} lies outside the target grid "
+            f"({_bounds_text(grid)}); choose one inside."
+        )
+    row = min(int((bounds.north - latitude) / grid.latitude_step), grid.rows - 1)
+    return row, min(int((east - bounds.west) / grid.longitude_step), grid.columns - 1)
+
+
+def _costs(settings: Settings) -> PanelCosts:
+    worth = settings.worth
+    return PanelCosts(
+        lifetime_years=settings.panel.lifetime_years,
+        mass=worth.panel_mass,
+        embodied_energy=worth.embodied_energy,
+        cost_low=worth.cost_low,
+        cost_high=worth.cost_high,
+    )
+
+
 def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
     """All layers of a dataset of canonical inputs, lazily.
 
@@ -156,19 +219,21 @@ def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
     settings : Settings
         The sections sky, panel, worth, uncertainty and layers are used.
     """
-    panel = Panel(
-        reflectance=settings.panel.reflectance * (1 - settings.panel.soiling),
-        specular_share=settings.panel.specular_share,
-        back_reflectance=settings.panel.back_reflectance,
-    )
-    return solve(
-        dataset,
-        panel,
-        Sky(**settings.sky.model_dump()),
-        field=Field(settings.panel.ground_cover, settings.worth.carbon_dioxide_ppm),
-        error=InputError(**settings.uncertainty.model_dump()),
-        extra_layers=settings.layers.extra,
-    )
+    return solve(dataset, **_engine_options(settings), extra_layers=settings.layers.extra)
+
+
+def _engine_options(settings: Settings) -> dict[str, Any]:
+    """The settings as the engine's own numbers."""
+    return {
+        "panel": Panel(
+            reflectance=settings.panel.reflectance * (1 - settings.panel.soiling),
+            specular_share=settings.panel.specular_share,
+            back_reflectance=settings.panel.back_reflectance,
+        ),
+        "sky": Sky(**settings.sky.model_dump()),
+        "field": Field(settings.panel.ground_cover, settings.worth.carbon_dioxide_ppm),
+        "error": InputError(**settings.uncertainty.model_dump()),
+    }
 
 
 def specs_of(settings: Settings) -> list[InputSpec]:

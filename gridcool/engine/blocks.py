@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from gridcool.engine.clear_sky import COLUMN_INPUTS
 from gridcool.engine.columns import column_basis
+from gridcool.engine.explain import Explanation, explain_cell
 from gridcool.engine.options import Field, InputError, Panel, Sky
 from gridcool.engine.orientations import compass, meridian
 from gridcool.engine.plan import Plan
@@ -63,14 +64,50 @@ def solve(
     InputDataError
         At once if dimensions do not fit; on computing if a value is impossible.
     """
-    panel, sky = panel or Panel(), sky or Sky()
+    plan = _plan(dataset, panel, sky, field, error, extra_layers)
+    return _label(_solve_lazily(dataset, plan), dataset, plan.layers)
+
+
+def explain(
+    dataset: xr.Dataset,
+    panel: Panel | None = None,
+    sky: Sky | None = None,
+    *,
+    field: Field | None = None,
+    error: InputError | None = None,
+) -> Explanation | None:
+    """Follow the light of a dataset of one cell; None where nothing is known of it.
+
+    Parameters are those of `solve`.
+    """
+    plan = _plan(dataset, panel, sky, field, error, ())
+    latitude = float(dataset["latitude"].values[0])
+    index, weights = latitude_stencil(latitude)
+    nodes = [
+        path_integrals(-90 + int(i) * LATITUDE_STEP, plan.basis, plan.orientations, plan.hours)
+        for i in index
+    ]
+    inputs = {
+        name: np.asarray(_strips(dataset, name)[..., 0, :]) for name in USED if name in dataset
+    }
+    return explain_cell(plan, inputs, latitude, Response.blend(nodes, weights))
+
+
+def _plan(
+    dataset: xr.Dataset,
+    panel: Panel | None,
+    sky: Sky | None,
+    field: Field | None,
+    error: InputError | None,
+    extra_layers: Sequence[str],
+) -> Plan:
     _check_shape(dataset)
     cloud = dataset.get("cloud_fraction")
     hours = int(cloud.sizes.get("hour", 1)) if cloud is not None else 1
     varying = tuple(prop for name, (prop, _) in COLUMN_INPUTS.items() if name in dataset)
-    plan = Plan(
-        panel=panel,
-        sky=sky,
+    return Plan(
+        panel=panel or Panel(),
+        sky=sky or Sky(),
         basis=column_basis(varying),
         orientations=compass() if hours > 1 else meridian(),
         hours=hours,
@@ -82,7 +119,6 @@ def solve(
             if not layer.on_request or name in extra_layers
         ),
     )
-    return _label(_solve_lazily(dataset, plan), dataset, plan.layers)
 
 
 def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -9,8 +10,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gridcool.engine.account import Cells
-from gridcool.engine.clear_sky import ClearSky
-from gridcool.engine.irradiance import Estimate, spread_over_hours
+from gridcool.engine.clear_sky import COLUMN_INPUTS, ClearSky, clear_sky_of
+from gridcool.engine.irradiance import (
+    LOW_SUN,
+    Estimate,
+    borrow_low_sun,
+    estimate,
+    spread_over_hours,
+)
 from gridcool.engine.options import Sky
 from gridcool.engine.plan import Plan, RowTables
 from gridcool.engine.skies import sky_table
@@ -42,6 +49,16 @@ class State:
     latitude: float
 
     @cached_property
+    def clear(self) -> FloatArray:
+        """G₀ of each hour bin with ground bounces, shape (12, hours, cells)."""
+        return self.clear_over(self.albedo)
+
+    def clear_over(self, albedo: FloatArray) -> FloatArray:
+        """The same over another ground."""
+        bounced = 1 / (1 - albedo * self.clear_sky.sky_albedo)
+        return np.asarray((self.clear_sky.beam + self.clear_sky.scattered) * bounced[:, None])
+
+    @cached_property
     def counts(self) -> FloatArray:
         """One, or zero in months in which snow covers the panel, shape (12, cells)."""
         sky = self.plan.sky
@@ -53,11 +70,17 @@ class State:
         """What the account needs of them."""
         return self.cells_for(self.plan.sky, self.found.transmission, self.albedo)
 
+    @cached_property
+    def over_black_ground(self) -> Cells:
+        """The same cells and irradiance over ground that reflects nothing."""
+        black = np.zeros_like(self.albedo)
+        cells = self.cells_for(self.plan.sky, self.found.transmission, black)
+        return replace(cells, clear=self.clear)
+
     def cells_for(self, sky: Sky, transmission: FloatArray, albedo: FloatArray) -> Cells:
         """The same for another sky, irradiance or albedo; snow months stay those of the cells."""
         table = sky_table(sky)
-        bounced = 1 / (1 - albedo * self.clear_sky.sky_albedo)
-        clear = (self.clear_sky.beam + self.clear_sky.scattered) * bounced[:, None]
+        clear = self.clear_over(albedo)
         known = replace(self.found, transmission=transmission)
         by_hour = spread_over_hours(known, table.darkest, clear)
         moments = table.moments(
@@ -72,3 +95,49 @@ class State:
             counts=self.counts,
             overcast_reflectance=sky.overcast_reflectance,
         )
+
+
+def build_state(
+    plan: Plan,
+    inputs: Mapping[str, FloatArray],
+    albedo: FloatArray,
+    latitude: float,
+    tables: RowTables,
+) -> tuple[State, NDArray[np.bool_]]:
+    """Bring together what the inputs say of a row of cells.
+
+    Parameters
+    ----------
+    plan : Plan
+    inputs : mapping of array, shape (12, cells), (12, hours, cells) or (cells,)
+    albedo : array, shape (12, cells)
+        Without gaps.
+    latitude : float
+        Radians.
+    tables : RowTables
+
+    Returns
+    -------
+    state : State
+    borrowed : array of bool, shape (cells,)
+        Where a month of low sun took its neighbours' irradiance.
+    """
+    response, count = tables.response, albedo.shape[1]
+    column = {name: inputs[name] for name in COLUMN_INPUTS if name in inputs}
+    nothing = np.zeros((12, count), np.float32)
+    empty = Estimate(nothing, nothing.astype(np.uint16), None)
+    clear_sky = clear_sky_of(plan.basis, column, latitude, response)
+    state = State(plan, tables, clear_sky, empty, albedo, latitude)
+    cloud = inputs.get("cloud_fraction")
+    found = estimate(
+        plan.sky,
+        sky_table(plan.sky),
+        clear=state.clear,
+        extraterrestrial=response.extraterrestrial[:, None],
+        cloud=None if cloud is None else cloud.reshape(12, -1, count),
+        temperature_range=inputs.get("temperature_range"),
+        measured=inputs.get("surface_shortwave"),
+    )
+    filled, borrowed = borrow_low_sun(found.transmission, response.extraterrestrial < LOW_SUN)
+    filled_state = replace(state, found=replace(found, transmission=filled))
+    return filled_state, np.asarray(borrowed.any(axis=0))

@@ -8,19 +8,12 @@ from functools import cache
 import numpy as np
 from numpy.typing import NDArray
 
-from gridcool.engine.clear_sky import COLUMN_INPUTS, clear_sky_of
-from gridcool.engine.irradiance import (
-    LOW_SUN,
-    NO_SUN,
-    Estimate,
-    borrow_low_sun,
-    estimate,
-)
+from gridcool.engine.irradiance import LOW_SUN, NO_SUN, borrow_low_sun
 from gridcool.engine.plan import YEAR, Plan, RowTables
 from gridcool.engine.readout import read_out
 from gridcool.engine.response import Response
 from gridcool.engine.skies import sky_table
-from gridcool.engine.state import State
+from gridcool.engine.state import build_state
 from gridcool.variables import flag_value, layer_variables
 
 FloatArray = NDArray[np.floating]
@@ -100,35 +93,19 @@ def _solve_cells(
     plan: Plan, inputs: Arrays, albedo: FloatArray, latitude: float, tables: RowTables
 ) -> tuple[dict[str, FloatArray], NDArray[np.uint16]]:
     """Layers and quality flags of cells whose albedo is known all year."""
-    response, sky, count = tables.response, plan.sky, albedo.shape[1]
-    column = {name: inputs[name] for name in COLUMN_INPUTS if name in inputs}
-    clear_sky = clear_sky_of(plan.basis, column, latitude, response)
-    bounced = 1 / (1 - albedo * clear_sky.sky_albedo)
-    clear = (clear_sky.beam + clear_sky.scattered) * bounced[:, None]
-    cloud = inputs.get("cloud_fraction")
-    found = estimate(
-        sky,
-        sky_table(sky),
-        clear=clear,
-        extraterrestrial=response.extraterrestrial[:, None],
-        cloud=None if cloud is None else cloud.reshape(12, -1, count),
-        temperature_range=inputs.get("temperature_range"),
-        measured=inputs.get("surface_shortwave"),
-    )
-    low_sun = response.extraterrestrial < LOW_SUN
-    transmission, borrowed = borrow_low_sun(found.transmission, low_sun)
-    found = Estimate(transmission, found.source, found.by_hour)
-    state = State(plan, tables, clear_sky, found, albedo, latitude)
+    state, borrowed = build_state(plan, inputs, albedo, latitude, tables)
+    transmission = state.found.transmission
     layers = read_out(state, inputs.get("temperature_range"))
-    layers["equivalent_cloud_fraction"] = _mean_cloud(plan, transmission, clear)
+    layers["equivalent_cloud_fraction"] = _mean_cloud(plan, transmission, state.clear)
     if "monthly_equivalent_cloud_fraction" in plan.layers:
-        layers["monthly_equivalent_cloud_fraction"] = sky_table(sky).equivalent_cloud(transmission)
+        table = sky_table(plan.sky)
+        layers["monthly_equivalent_cloud_fraction"] = table.equivalent_cloud(transmission)
     known = ~np.isnan(transmission).any(axis=0)
-    covered = (state.counts == 0) & (clear.sum(axis=1) > NO_SUN)
+    covered = (state.counts == 0) & (state.clear.sum(axis=1) > NO_SUN)
     flags = (
-        np.bitwise_or.reduce(found.source, axis=0)
-        | clear_sky.quality
-        | _bit(borrowed.any(axis=0), flag_value("input_quality", "low_sun_month_filled"))
+        np.bitwise_or.reduce(state.found.source, axis=0)
+        | state.clear_sky.quality
+        | _bit(borrowed, flag_value("input_quality", "low_sun_month_filled"))
         | _bit(covered.any(axis=0), flag_value("input_quality", "snow_month_left_out"))
         | _bit(~known, flag_value("input_quality", "irradiance_missing"))
     )
