@@ -9,6 +9,7 @@ from __future__ import annotations
 import argparse
 import importlib
 import json
+import os
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -31,10 +32,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
     options = _parser().parse_args(arguments)
     try:
-        return int(options.command(options))
+        code = int(options.command(options))
+        sys.stdout.flush()
+        return code
     except GridcoolError as problem:
         print(f"gridcool: {problem}", file=sys.stderr)
         return problem.exit_code
+    except BrokenPipeError:  # the reader of our lines, such as head, has seen enough
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
     except KeyboardInterrupt:
         print("gridcool: stopped; the last release is untouched.", file=sys.stderr)
         return 130

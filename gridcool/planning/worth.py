@@ -36,7 +36,7 @@ class PanelCosts:
 
 
 def energy_payback_days(flux: float, costs: PanelCosts) -> float | None:
-    """Days after which the panel has rejected the energy that its making took; None without a flux."""
+    """Days after which the panel has rejected the energy that making it took; None without flux."""
     return costs.embodied_energy * 1e6 / (flux * DAY) if flux > 0 else None
 
 

@@ -93,10 +93,10 @@ def _month(months: Facts, index: int) -> str:
 
 def _worth(worth: Facts) -> Iterator[str]:
     yield "Worth per m2 of panel"
-    yield f"  carbon dioxide, standing view    {worth['co2e_standing']:.0f} kg once, while it stands"
+    yield f"  carbon dioxide, standing view    {worth['co2e_standing']:.0f} kg while it stands"
     yield f"  carbon dioxide, 100-year view    {worth['co2e_100yr']:.2f} kg for each year it stands"
     yield (
-        f"  mass {worth['mass']:g} kg, embodied energy {worth['embodied_energy']:g} MJ, paid back in "
+        f"  mass {worth['mass']:g} kg, embodied energy {worth['embodied_energy']:g} MJ, back in "
         f"{_number(worth['energy_payback_days'])} days"
     )
     for view in ("standing", "100-year"):
@@ -118,7 +118,7 @@ def _seasons(layers: Facts) -> Iterator[str]:
         return
     for start, tilt, side in zip(starts, tilts, layers["seasonal_azimuth"], strict=True):
         yield f"  from {MONTHS[int(start) - 1]}    {_orientation(tilt, side)}"
-    yield f"  turning it twice a year brings {_percent(layers['seasonal_gain'])} over the best fixed"
+    yield f"  turning it twice a year brings {_percent(layers['seasonal_gain'])} more"
 
 
 def _percent(share: float | None) -> str:
