@@ -30,6 +30,13 @@ FIXED_LAYERS = {
     "surface_shortwave": "W m-2",
     "monthly_surface_shortwave": "W m-2",
     "equivalent_cloud_fraction": "1",
+    "flux_uncertainty": "W m-2",
+    "seasonal_gain": "1",
+    "seasonal_tilt": "degree",
+    "low_ray_hours": "h yr-1",
+    "daytime_cooling": "K",
+    "co2e_standing": "kg m-2",
+    "co2e_100yr": "kg m-2 yr-1",
 }
 
 
@@ -77,13 +84,13 @@ def test_only_the_diurnal_range_is_a_difference() -> None:
 def test_layers(layer: LayerVariable) -> None:
     assert layer.long_name
     assert layer.ramp
-    assert layer.bands in ("year", "month")
+    assert layer.count == {"year": 1, "season": 2, "month": 12}[layer.bands]
+    bands = (layer.bands,) if layer.count > 1 else ()
+    assert layer.dimensions == (*bands, "latitude", "longitude")
     assert re.fullmatch(r"[a-z][a-z0-9_]*", layer.name)
     assert layer.is_flags == (layer.units == "")
     if not layer.is_flags:
         assert not Unit(layer.units).is_unknown()
-    if layer.bands == "month":
-        assert layer.name.removeprefix("monthly_") in layer_variables()
 
 
 @pytest.mark.parametrize("layer", [each for each in LAYERS if each.is_flags], ids=name_of)
