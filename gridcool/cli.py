@@ -32,9 +32,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
     options = _parser().parse_args(arguments)
     try:
-        code = int(options.command(options))
+        options.command(options)
         sys.stdout.flush()
-        return code
     except GridcoolError as problem:
         print(f"gridcool: {problem}", file=sys.stderr)
         return problem.exit_code
@@ -44,6 +43,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except KeyboardInterrupt:
         print("gridcool: stopped; the last release is untouched.", file=sys.stderr)
         return 130
+    return 0
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -80,32 +80,29 @@ def _settings(path: Path) -> Any:
     return importlib.import_module("gridcool.config").load_settings(path)
 
 
-def _check(options: argparse.Namespace) -> int:
+def _check(options: argparse.Namespace) -> None:
     for line in _pipeline().check(_settings(options.settings)):
         print(line)
-    return 0
 
 
-def _screen(options: argparse.Namespace) -> int:
+def _screen(options: argparse.Namespace) -> None:
     settings = _settings(options.settings)
     with _progress(quiet=options.quiet) as progress:
         result = _pipeline().screen(settings, progress)
     for line in result.summary(top=5):
         print(line)
-    return 0
 
 
-def _cell(options: argparse.Namespace) -> int:
+def _cell(options: argparse.Namespace) -> None:
     facts = _pipeline().cell(_settings(options.settings), options.latitude, options.longitude)
     page = importlib.import_module("gridcool.products.cell")
     if options.figure is not None:
         page.draw_cell(facts, options.figure)
     if options.json:
         print(json.dumps(facts, indent=2, ensure_ascii=False))
-        return 0
+        return
     for line in page.cell_lines(facts):
         print(line)
-    return 0
 
 
 class _Lines:

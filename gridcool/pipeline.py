@@ -88,12 +88,17 @@ class ScreenResult:
         yield f"Results: {self.current} (release {self.release.name})"
         if self.regions is None:
             return
-        yield f"First {min(top, len(self.regions))} of {len(self.regions)} regions:"
-        for _, row in self.regions.head(top).iterrows():
+        yield f"First of {len(self.regions)} regions:"
+        ranked = self.regions[self.regions["rank"].notna()]
+        for _, row in ranked.head(top).iterrows():
             yield (
                 f"  {row['rank']:>3}  {row['region']:<24} {row['rejected_flux_mean']:6.1f} W m-2 "
-                f"of panel at {row['tilt']:.0f}° tilt facing {row['azimuth']:.0f}°"
+                f"of panel, {_facing(row['tilt'], row['azimuth'])}"
             )
+
+
+def _facing(tilt: float, azimuth: float) -> str:
+    return f"tilted {tilt:.0f}°" + ("" if pd.isna(azimuth) else f" facing {azimuth:.0f}°")
 
 
 def check(settings: Settings) -> Iterator[str]:
@@ -140,7 +145,7 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
                 on_progress=lambda _what, done, total: progress.advance(done, total),
             )
         progress.stage("Ranking the regions")
-        regions = _regions(settings, grid, stage)
+        regions = _regions(settings, grid, stage, progress)
         if regions is not None:
             write_region_table(regions, stage / REGION_TABLE)
         progress.stage("Publishing")
@@ -281,7 +286,9 @@ def _threads() -> Iterator[None]:
         yield
 
 
-def _regions(settings: Settings, grid: Grid, product: Path) -> pd.DataFrame | None:
+def _regions(
+    settings: Settings, grid: Grid, product: Path, progress: Progress
+) -> pd.DataFrame | None:
     """The region table from the layers just written, or None without regions."""
     wanted = settings.regions
     if wanted is None:
@@ -290,6 +297,8 @@ def _regions(settings: Settings, grid: Grid, product: Path) -> pd.DataFrame | No
         regions = read_regions(settings.resolve(wanted.path), wanted.name)
     else:
         regions = box_regions(grid.bounds, wanted.boxes or 0.0)
+    for note in regions.notes:
+        progress.stage(f"warning: {note}")
     layers = {name: read_layer(product, name) for name in RANKED_LAYERS}
     return region_table(layers, coverage(regions, grid), ground_cover=settings.panel.ground_cover)
 

@@ -123,9 +123,9 @@ def write_field(folder: Path, name: str, values: Array) -> None:
 # West, south, east, north; east beyond 180 crosses the antimeridian.
 DISTRICTS = {
     "Astrelle": (-106, 20, -70, 52),
-    "Bovanne": (-82, -12, -20, 34),
+    "Bovanne": (-82, -12, -20, 20),
     "Carthine": (-16, -6, 30, 26),
-    "Dromelund": (20, -18, 62, 6),
+    "Dromelund": (30, -18, 62, 6),
     "Elvarre": (15, -40, 75, -19),
     "Fennimar": (75, -34, 125, -12),
     "Gorstane": (80, -66, 135, -35),

@@ -32,23 +32,24 @@ def invented_layers(grid: Grid, rows: int | tuple[int, ...] = 64) -> xr.Dataset:
     values = {name: invented_values(grid, name) for name in layer_variables()}
     dataset = xr.Dataset(
         {
-            name: (("month", "latitude", "longitude")[-array.ndim :], da.from_array(array))
+            name: (layer_variables()[name].dimensions, da.from_array(array))
             for name, array in values.items()
         },
         coords={
             "month": np.arange(1, 13),
+            "season": [1, 2],
             "latitude": grid.latitudes,
             "longitude": grid.longitudes,
         },
     )
-    return dataset.chunk(month=-1, latitude=rows, longitude=-1)
+    return dataset.chunk(month=-1, season=-1, latitude=rows, longitude=-1)
 
 
 def invented_values(grid: Grid, name: str) -> np.ndarray:
     """One layer: each cell has its own value, some are missing."""
     layer = layer_variables()[name]
     rng = np.random.default_rng(list(name.encode()))
-    months = (12,) if layer.bands == "month" else ()
+    months = (layer.count,) if layer.count > 1 else ()
     if layer.is_flags:
         chosen = rng.integers(0, 1024, size=grid.shape).astype(np.uint16)
         chosen[: grid.rows // 2] = 4

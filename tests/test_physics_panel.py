@@ -130,7 +130,8 @@ def test_mirror_law(elevation: float, azimuth: float, tilt: float, facing: float
     assert float(np.linalg.norm(r)) == pytest.approx(1, abs=1e-12)
     assert float(panel.cosine_of_incidence(r, n)) == pytest.approx(cosine, abs=1e-12)
     assert float(panel.cosine_of_incidence(r, s)) == pytest.approx(2 * cosine**2 - 1, abs=1e-12)
-    assert np.linalg.det(np.array([s, n, r], float)) == pytest.approx(0, abs=1e-12)
+    coplanar = np.dot(np.cross(np.array(s, float), np.array(n, float)), np.array(r, float))
+    assert coplanar == pytest.approx(0, abs=1e-12)
     assert float(r[2]) == pytest.approx(2 * cosine * np.cos(tilt) - np.sin(elevation), abs=1e-12)
 
 
