@@ -92,7 +92,7 @@ def transmittance_ozone(slant_ozone_cm: ArrayLike) -> FloatArray:
     x = np.asarray(slant_ozone_cm)
     return np.asarray(
         1
-        - 0.1611 * x * (1 + 139.48 * x) ** -0.3035
+        - 0.1611 * x * (1 + 139.48 * x) ** -0.3034
         - 0.002715 * x / (1 + 0.044 * x + 0.0003 * x**2)
     )
 

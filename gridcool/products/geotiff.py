@@ -207,14 +207,13 @@ def _add_overviews(staged: StagedLayer) -> None:
 
 
 def overview_resampling(layer: LayerVariable) -> Resampling:
-    """How cells are merged for a smaller picture of the layer.
+    """How a coarser copy is made: means for quantities, one of the values where means mislead.
 
-    The mean of 350° and 10° is not 180°, and the mean of two sets of flags is neither: a compass
-    angle keeps one of its cells, flags the most frequent set. Everything else is averaged.
+    Between 359° and 1° lies north and not south, and between March and September no month.
     """
     if layer.is_flags:
         return Resampling.mode
-    return Resampling.nearest if layer.ramp == "compass" else Resampling.average
+    return Resampling.nearest if layer.ramp in ("compass", "month") else Resampling.average
 
 
 def _statistics_tags(band: BandStatistics) -> dict[str, str]:
