@@ -8,6 +8,7 @@ import numpy as np
 import xarray as xr
 
 from gridcool.engine.explain import Explanation, Ledger, year_mean
+from gridcool.physics.soil import SOILS, amplitude_at_depth, damping_depth
 from gridcool.planning.worth import (
     PanelCosts,
     cost_per_tonne_100yr,
@@ -22,6 +23,8 @@ PARTS = {
     "uncertainty_cloud_distribution": "of the cloud within the month",
     "flux_uncertainty": "together",
 }
+#: Depths at which the cooling of the ground is told, m.
+DEPTHS = (0.05, 0.1, 0.2)
 EXTRA_LAYERS = (*list(PARTS)[:-1], "monthly_tilt", "monthly_tilt_flux")
 
 
@@ -77,12 +80,30 @@ def cell_facts(
             "flux": _plain(found.response),
         },
         "uncertainty": {text: values[name] for name, text in PARTS.items()},
+        "ground": _ground(values.get("daytime_cooling")),
         "worth": _worth(values, costs),
     }
 
 
 def _annual(ledger: Ledger) -> dict[str, float]:
     return {name: year_mean(months) for name, months in vars(ledger).items()}
+
+
+def _ground(cooling: float | None) -> list[dict[str, Any]]:
+    """How deep the daytime cooling goes in each usual soil."""
+    rows = []
+    for soil in SOILS:
+        shares = amplitude_at_depth(1.0, np.array(DEPTHS), soil.diffusivity)
+        rows.append(
+            {
+                "soil": soil.name,
+                "diffusivity": soil.diffusivity,
+                "damping_depth": float(damping_depth(soil.diffusivity)),
+                "depths": list(DEPTHS),
+                "cooling": None if cooling is None else [cooling * float(s) for s in shares],
+            }
+        )
+    return rows
 
 
 def _worth(values: dict[str, Any], costs: PanelCosts) -> dict[str, Any]:

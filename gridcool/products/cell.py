@@ -63,6 +63,8 @@ def cell_lines(facts: Facts) -> Iterator[str]:
     for name, value in facts["uncertainty"].items():
         yield f"  {name:<50}{value:13.2f}"
     yield ""
+    yield from _ground(layers.get("daytime_cooling"), facts["ground"])
+    yield ""
     yield from _worth(facts["worth"])
     yield ""
     yield f"input quality: {', '.join(facts['quality']) or 'nothing to report'}"
@@ -89,6 +91,19 @@ def _month(months: Facts, index: int) -> str:
         + ("         -" if tilt is None else f"{tilt:10.1f}")
         + f"{months['tilt_flux'][index]:7.1f}{snow}"
     )
+
+
+def _ground(cooling: float | None, soils: list[Facts]) -> Iterator[str]:
+    if cooling is None:
+        yield "Daytime cooling: not known without a diurnal temperature range"
+        return
+    depths = "".join(f"{100 * depth:8.0f} cm" for depth in soils[0]["depths"])
+    yield f"Daytime cooling of the air by a field {cooling:.1f} K (an index, not a forecast)"
+    yield f"  and of the ground below, K{'diffusivity m2 s-1':>24}  wave reach{depths}"
+    for row in soils:
+        cooled = "".join(f"{value:11.2f}" for value in row["cooling"])
+        reach = f"{100 * row['damping_depth']:9.1f} cm"
+        yield f"  {row['soil']:<26}{row['diffusivity']:22.2e}{reach}{cooled}"
 
 
 def _worth(worth: Facts) -> Iterator[str]:
