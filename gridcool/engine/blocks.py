@@ -25,7 +25,9 @@ from gridcool.variables import input_variables, layer_variables
 FloatArray = NDArray[np.floating]
 
 LATITUDE_STEP = 2.5  # degrees between nodes of the path integrals
-USED = ("albedo", "cloud_fraction", "temperature_range", "surface_shortwave", *COLUMN_INPUTS)
+VARYING = ("albedo", "cloud_fraction", "temperature_range")
+ERRORS = tuple(f"{name}_standard_error" for name in VARYING)
+USED = (*VARYING, "surface_shortwave", *COLUMN_INPUTS, *ERRORS)
 
 
 def solve(
@@ -45,7 +47,8 @@ def solve(
         Inputs under their canonical names and units, see ``variables.toml``; dimensions month,
         latitude and longitude, with an hour dimension for a cloud fraction that has a diurnal
         cycle (bins of local mean solar time, evenly spaced from midnight). Lazy or not; NaN where
-        missing. Any latitudes are welcome, evenly spaced or not.
+        missing. Any latitudes are welcome, evenly spaced or not. Standard errors of the monthly
+        means of albedo, cloud_fraction and temperature_range may come as NAME_standard_error.
     panel : Panel
     sky : Sky
     field : Field
@@ -177,6 +180,8 @@ def _solve_block(
 
 
 def _check_range(name: str, values: FloatArray, latitudes: FloatArray) -> None:
+    if name in ERRORS:
+        return
     low, high = input_variables()[name].valid
     finite = np.isfinite(values)
     if (finite & ((values < low - 1e-6) | (values > high + 1e-6))).any():

@@ -39,6 +39,11 @@ class State:
     albedo : array, shape (12, cells)
     latitude : float
         Radians.
+    albedo_error : array, shape (12, cells), or None
+        Standard error of the monthly albedo from the spread of years.
+    transmissions : tuple of array, shape (12, cells)
+        Irradiance over its clear-sky value with one input moved by its standard error from the
+        spread of years, one array an input.
     """
 
     plan: Plan
@@ -47,6 +52,8 @@ class State:
     found: Estimate
     albedo: FloatArray
     latitude: float
+    albedo_error: FloatArray | None = None
+    transmissions: tuple[FloatArray, ...] = ()
 
     @cached_property
     def clear(self) -> FloatArray:
@@ -128,16 +135,37 @@ def build_state(
     empty = Estimate(nothing, nothing.astype(np.uint16), None)
     clear_sky = clear_sky_of(plan.basis, column, latitude, response)
     state = State(plan, tables, clear_sky, empty, albedo, latitude)
-    cloud = inputs.get("cloud_fraction")
-    found = estimate(
+    low_sun = response.extraterrestrial < LOW_SUN
+    found = _estimated(state, inputs)
+    filled, borrowed = borrow_low_sun(found.transmission, low_sun)
+    moved = tuple(
+        borrow_low_sun(_estimated(state, _moved(inputs, name)).transmission, low_sun)[0]
+        for name in ("cloud_fraction", "temperature_range")
+        if f"{name}_standard_error" in inputs and name in inputs
+    )
+    whole = replace(
+        state,
+        found=replace(found, transmission=filled),
+        albedo_error=inputs.get("albedo_standard_error"),
+        transmissions=moved,
+    )
+    return whole, np.asarray(borrowed.any(axis=0))
+
+
+def _estimated(state: State, inputs: Mapping[str, FloatArray]) -> Estimate:
+    cloud, plan = inputs.get("cloud_fraction"), state.plan
+    return estimate(
         plan.sky,
         sky_table(plan.sky),
         clear=state.clear,
-        extraterrestrial=response.extraterrestrial[:, None],
-        cloud=None if cloud is None else cloud.reshape(12, -1, count),
+        extraterrestrial=state.tables.response.extraterrestrial[:, None],
+        cloud=None if cloud is None else cloud.reshape(12, -1, state.albedo.shape[1]),
         temperature_range=inputs.get("temperature_range"),
         measured=inputs.get("surface_shortwave"),
     )
-    filled, borrowed = borrow_low_sun(found.transmission, response.extraterrestrial < LOW_SUN)
-    filled_state = replace(state, found=replace(found, transmission=filled))
-    return filled_state, np.asarray(borrowed.any(axis=0))
+
+
+def _moved(inputs: Mapping[str, FloatArray], name: str) -> dict[str, FloatArray]:
+    """The inputs with one of them lowered by its standard error, or raised where that is less."""
+    values, error = inputs[name], np.nan_to_num(inputs[f"{name}_standard_error"])
+    return {**inputs, name: np.where(values > error, values - error, values + error)}

@@ -27,6 +27,7 @@ COMBINED = (
     "uncertainty_irradiance",
     "uncertainty_albedo",
     "uncertainty_cloud_distribution",
+    "uncertainty_years",
 )
 
 
@@ -77,6 +78,7 @@ def uncertainty_parts(
         _from_irradiance(state, change),
         _from_albedo(state, change),
         _from_cloud_distribution(state, change),
+        _from_years(state, change),
     )
     named = dict(zip(COMBINED, parts, strict=True))
     total = np.sqrt(np.sum([part**2 for part in parts], axis=0))
@@ -117,3 +119,19 @@ def _from_cloud_distribution(state: State, change: _Change) -> FloatArray:
     other = replace(sky, cloud_concentration=sky.cloud_concentration * factor)
     cells = state.cells_for(other, state.found.transmission, state.albedo)
     return np.asarray(np.abs(change(cells).sum(axis=0)))
+
+
+def _from_years(state: State, change: _Change) -> FloatArray:
+    """Standard errors of the inputs' monthly means where files hold several years.
+
+    Months err independently. Zero where no file tells.
+    """
+    sky, known = state.plan.sky, state.found.transmission
+    squares = np.zeros(state.albedo.shape[1], np.float32)
+    if state.albedo_error is not None:
+        error = np.nan_to_num(state.albedo_error)
+        moved = np.where(state.albedo > error, state.albedo - error, state.albedo + error)
+        squares += (change(state.cells_for(sky, known, moved)) ** 2).sum(axis=0)
+    for transmission in state.transmissions:
+        squares += (change(state.cells_for(sky, transmission, state.albedo)) ** 2).sum(axis=0)
+    return np.asarray(np.sqrt(squares))

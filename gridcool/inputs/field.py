@@ -104,6 +104,33 @@ class Field:
         near = (values >= low - margin) & (values <= high + margin)
         return np.where(near, np.clip(values, low, high), values).astype(np.float32)
 
+    @property
+    def has_years(self) -> bool:
+        """Whether the file tells how much years differ."""
+        return self.steps.years > 1 and self.hours is None and self.divisor is None
+
+    def read_standard_error(self, rows: slice) -> NDArray[np.float32]:
+        """Standard error of the monthly means of `read`, from the spread of the file's years.
+
+        Returns
+        -------
+        array, shape (12, rows, columns)
+            NaN where fewer than two years are known.
+        """
+        shape = (12, rows.stop - rows.start, len(self.longitude))
+        total, squares, count = np.zeros(shape), np.zeros(shape), np.zeros(shape)
+        index = np.arange(12)[:, None, None]
+        for step, month in enumerate(self.steps.months):
+            value = self._step(step, rows).astype(np.float64)
+            here = (index == month) & ~np.isnan(value)
+            total += np.where(here, value, 0)
+            squares += np.where(here, value**2, 0)
+            count += here
+        several = count > 1
+        n = np.where(several, count, 2)
+        variance = np.maximum(squares - total**2 / n, 0) / (n - 1)
+        return np.where(several, np.sqrt(variance / n), np.nan).astype(np.float32)
+
     def _climatology(self, rows: slice) -> NDArray[np.float32]:
         """Monthly means of the file's steps, converted unless a ratio is still to be formed."""
         if self.steps.is_annual:

@@ -20,6 +20,8 @@ from gridcool.inputs.spec import Finding, InputReport, InputSpec, refuse
 from gridcool.variables import input_variables
 
 GLOBE = Bounds(-180.0, -90.0, 180.0, 90.0)
+#: Inputs whose spread from year to year feeds the uncertainty, where the file has years.
+SPREAD = ("albedo", "cloud_fraction", "temperature_range")
 PAIR = ("temperature_maximum", "temperature_minimum")
 
 
@@ -31,7 +33,8 @@ class Inputs:
     ----------
     dataset : xarray.Dataset
         Lazy, float32, in whole-width strips; names and units of ``variables.toml``, temperature
-        maximum and minimum turned into temperature_range. NaN where missing.
+        maximum and minimum turned into temperature_range. NaN where missing. Where a file has
+        several years, the standard error of its monthly means as ``NAME_standard_error``.
     reports : tuple of InputReport
     """
 
@@ -109,6 +112,8 @@ def load_inputs(specs: Sequence[InputSpec], grid: Grid, chunk_rows: int) -> Inpu
         if name in PAIR:
             continue
         variables[name] = _lazy(grid, chunk_rows, field)
+        if name in SPREAD and field.has_years:
+            variables[f"{name}_standard_error"] = _lazy_standard_error(grid, chunk_rows, field)
     if PAIR[0] in fields and "temperature_range" not in fields:
         variables["temperature_range"] = _lazy(grid, chunk_rows, *(fields[name] for name in PAIR))
     coordinates = {
@@ -245,6 +250,36 @@ class _Strips:
             shape = (field.months, *hours, rows.stop - rows.start, self._grid.columns)
             return np.full(shape, np.nan, np.float32)
         return gridding.apply(field.read(source), rows, source)
+
+
+class _SpreadStrips:
+    """Reads strips of the standard error of one file's monthly means.
+
+    Neighbouring cells are taken to err together, so that it is regridded like the values.
+    """
+
+    def __init__(self, grid: Grid, field: Field) -> None:
+        self._field, self._columns = field, grid.columns
+        self._gridding = gridding_to(grid, field.latitude, field.longitude)
+
+    def read(self, rows: slice) -> NDArray[np.float32]:
+        source = self._gridding.source_rows(rows)
+        if source.stop == source.start:
+            return np.full((12, rows.stop - rows.start, self._columns), np.nan, np.float32)
+        return self._gridding.apply(self._field.read_standard_error(source), rows, source)
+
+
+def _lazy_standard_error(
+    grid: Grid, chunk_rows: int, field: Field
+) -> tuple[tuple[str, ...], da.Array]:
+    reader = delayed(_SpreadStrips(grid, field), traverse=False, pure=True)
+    strips = []
+    for start in range(0, grid.rows, chunk_rows):
+        rows = slice(start, min(start + chunk_rows, grid.rows))
+        shape = (12, rows.stop - rows.start, grid.columns)
+        strips.append(da.from_delayed(reader.read(rows), shape, np.float32))
+    values: da.Array = da.concatenate(strips, axis=-2)
+    return ("month", "latitude", "longitude"), values
 
 
 def _lazy(grid: Grid, chunk_rows: int, *fields: Field) -> tuple[tuple[str, ...], da.Array]:

@@ -21,6 +21,7 @@ PARTS = {
     "uncertainty_irradiance": "of the irradiance estimate",
     "uncertainty_albedo": "of the albedo",
     "uncertainty_cloud_distribution": "of the cloud within the month",
+    "uncertainty_years": "of means over few years",
     "flux_uncertainty": "together",
 }
 #: Depths at which the cooling of the ground is told, m.
