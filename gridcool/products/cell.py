@@ -77,8 +77,8 @@ def _low_rays(layers: Facts) -> str:
     hours, direction = layers["low_ray_hours"], layers["low_ray_direction"]
     if hours is None:
         return "none, the panel is covered"
-    most = "" if direction is None else f", most to {direction:.0f} degrees and its mirror image"
-    return f"{hours:.0f} hours of sun a year send the beam below 10 degrees or down{most}"
+    most = "" if direction is None else f", most to {direction:.0f}° and its mirror image"
+    return f"{hours:.0f} hours of sun a year send the beam below 10° or down{most}"
 
 
 def _month(months: Facts, index: int) -> str:
