@@ -128,7 +128,8 @@ def _account_layers(state: State, found: Optimum) -> Layers:
 def _season_layers(state: State, found: Optimum, annual: FloatArray) -> Layers:
     """The best two-position year."""
     orientations = state.plan.orientations
-    monthly = _by_month(state, found, orientations.coarse) * YEAR[:, None]
+    monthly = _by_month(state, found, orientations.coarse)
+    monthly *= YEAR[:, None]
     start, length = best_cut(monthly)
     one = _annual(state, found.beam, found.diffuse, season_mask(start, length))
     year = two_seasons(
@@ -150,7 +151,8 @@ def _month_layers(state: State, found: Optimum) -> Layers:
     orientations = state.plan.orientations
     monthly = _by_month(state, found, np.arange(len(orientations.east)))
     tilt, azimuth, flux = [], [], []
-    for month in monthly:
+    for response in monthly:
+        month = np.ascontiguousarray(response.T)
         best = find_best(month, orientations)
         lit = np.abs(month).max(axis=1) > 0
         tilt.append(np.where(lit, best.tilt, np.nan))
@@ -195,12 +197,12 @@ def _annual(
 
 
 def _by_month(state: State, found: Optimum, candidates: NDArray[np.intp]) -> FloatArray:
-    """Monthly mean flux of some candidates, shape (12, cells, candidates)."""
+    """Monthly mean flux of some candidates, shape (12, candidates, cells)."""
     weighted = state.tables.weighted[:, :, candidates] / YEAR[:, None]
-    flux = np.matmul(found.beam.transpose(0, 2, 1), weighted)
+    flux = np.matmul(weighted.transpose(0, 2, 1), found.beam)
     cosine = np.cos(np.deg2rad(state.plan.orientations.tilt[candidates])).astype(np.float32)
     for power, escaping in enumerate(found.diffuse.escaping):
         last = power >= len(found.diffuse.forgone)
         part = escaping if last else escaping - found.diffuse.forgone[power]
-        flux += (part * state.counts)[:, :, None] * cosine**power
+        flux += (part * state.counts)[:, None] * cosine[:, None] ** power
     return np.asarray(flux)

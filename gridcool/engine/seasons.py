@@ -47,8 +47,9 @@ def best_cut(monthly: FloatArray) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
 
     Parameters
     ----------
-    monthly : array, shape (12, cells, orientations)
-        Each month's share of the annual mean flux.
+    monthly : array, shape (12, orientations, cells)
+        Each month's share of the annual mean flux; cells last, so that maxima over orientations
+        run along whole rows of memory.
 
     Returns
     -------
@@ -57,15 +58,15 @@ def best_cut(monthly: FloatArray) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """
     running = np.concatenate([np.zeros_like(monthly[:1]), np.cumsum(monthly, axis=0)])
     whole = running[12]
-    best = np.full(whole.shape[0], -np.inf, np.float32)
-    start = np.zeros(whole.shape[0], np.intp)
-    length = np.zeros(whole.shape[0], np.intp)
+    cells = whole.shape[-1]
+    best = np.full(cells, -np.inf, np.float32)
+    start, length = np.zeros(cells, np.intp), np.zeros(cells, np.intp)
     for first, months in month_cuts():
         last = first + months
         season = running[min(last, 12)] - running[first]
         if last > 12:
             season = season + running[last - 12]
-        value = season.max(axis=1) + (whole - season).max(axis=1)
+        value = season.max(axis=0) + (whole - season).max(axis=0)
         better = value > best
         best = np.where(better, value, best)
         start = np.where(better, first, start)
