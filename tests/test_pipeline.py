@@ -161,14 +161,14 @@ def test_strips_do_not_change_the_result(rows: int) -> None:
     dims = ("month", "latitude", "longitude")
     dataset = xr.Dataset(
         {
-            "albedo": (dims, rng.uniform(0.1, 0.9, (12, 7, 600)).astype(np.float32)),
-            "cloud_fraction": (dims, rng.uniform(0, 1, (12, 7, 600)).astype(np.float32)),
-            "elevation": (dims[1:], rng.uniform(0, 4000, (7, 600)).astype(np.float32)),
+            "albedo": (dims, rng.uniform(0.1, 0.9, (12, 7, 2100)).astype(np.float32)),
+            "cloud_fraction": (dims, rng.uniform(0, 1, (12, 7, 2100)).astype(np.float32)),
+            "elevation": (dims[1:], rng.uniform(0, 4000, (7, 2100)).astype(np.float32)),
         },
         coords={
             "month": np.arange(1, 13),
             "latitude": np.linspace(70, -50, 7),
-            "longitude": np.arange(600.0),
+            "longitude": np.linspace(-180, 179, 2100),
         },
     )
     whole = solve(dataset, sky=Sky(irradiance="cloud")).compute()

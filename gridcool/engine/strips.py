@@ -19,9 +19,11 @@ from gridcool.variables import flag_value, layer_variables
 FloatArray = NDArray[np.floating]
 Arrays = Mapping[str, FloatArray]
 
-#: Cells of a row that are worked on together: small enough for the processor's cache, and fixed,
-#: so that the result does not depend on how the grid is cut into blocks.
-SEGMENT = 512
+#: Cells of a row that are worked on together: enough to make Python's own share of the time small,
+#: few enough for the memory of a thread (fewer with an hour axis), and fixed by the run's plan
+#: alone, so that the result does not depend on how the grid is cut into blocks.
+SEGMENT = 2048
+SMALLEST_SEGMENT = 256
 
 
 @cache
@@ -58,11 +60,12 @@ def solve_strip(
     """
     rows, columns = inputs["albedo"].shape[-2:]
     stack = np.empty((list(layer_bands(plan.layers).values())[-1].stop, rows, columns), np.float32)
+    segment = max(SMALLEST_SEGMENT, SEGMENT // plan.hours)
     for row in range(rows):
         tables = RowTables.of(responses[row], plan)
         latitude = float(np.deg2rad(latitudes[row]))
-        for start in range(0, columns, SEGMENT):
-            part = slice(start, min(start + SEGMENT, columns))
+        for start in range(0, columns, segment):
+            part = slice(start, min(start + segment, columns))
             cells = {name: values[..., row, part] for name, values in inputs.items()}
             _solve_segment(plan, cells, latitude, tables, stack[:, row, part])
     return stack
