@@ -173,7 +173,7 @@ def judge(field: Field, found: Survey) -> Iterator[Finding]:
         yield Finding(
             "warning", f"{field.label}: every value is {low.value:g}; is it the right one?"
         )
-    elif found.unusual:
+    elif found.unusual > found.rounded:
         usual = f"{known.usual[0]:g} to {known.usual[1]:g}{unit}"
         worst = _worst(known, low, high)
         yield Finding(

@@ -114,7 +114,7 @@ def load_inputs(specs: Sequence[InputSpec], grid: Grid, chunk_rows: int) -> Inpu
         variables[name] = _lazy(grid, chunk_rows, field)
         if name in SPREAD and field.has_years:
             variables[f"{name}_standard_error"] = _lazy_standard_error(grid, chunk_rows, field)
-    if PAIR[0] in fields and "temperature_range" not in fields:
+    if set(PAIR) <= set(fields) and "temperature_range" not in fields:
         variables["temperature_range"] = _lazy(grid, chunk_rows, *(fields[name] for name in PAIR))
     coordinates = {
         "month": np.arange(1, 13),
