@@ -65,7 +65,8 @@ def test_two_positions_beat_one_and_mirror_across_the_equator() -> None:
     # The Earth is nearer the sun in January, and the half years differ in length.
     np.testing.assert_allclose(tilt[:, :2], tilt[:, :1:-1], atol=3)
     begins = answer["seasonal_start"].values[:, :, 0]
-    np.testing.assert_array_equal((begins[:, :2] - begins[:, :1:-1]) % 12, 6)
+    shift = (begins[:, :2] - begins[:, :1:-1]) % 12
+    assert ((shift >= 5) & (shift <= 7)).all()
     # The fixed panel lies between its two positions at mid-latitudes.
     fixed = answer["tilt"].values[:, 0]
     assert (tilt[1, [0, 3]] < fixed[[0, 3]]).all()
