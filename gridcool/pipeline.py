@@ -26,7 +26,7 @@ from gridcool.inputs.spec import InputReport, InputSpec
 from gridcool.planning.explanation import EXTRA_LAYERS, cell_facts
 from gridcool.planning.ranking import LAYERS as RANKED_LAYERS
 from gridcool.planning.ranking import region_table
-from gridcool.planning.regions import box_regions, coverage, read_regions
+from gridcool.planning.regions import Regions, box_regions, coverage, read_regions
 from gridcool.planning.worth import PanelCosts
 from gridcool.products.layers import write_layers
 from gridcool.products.reading import read_layer
@@ -131,6 +131,7 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
     for report in loaded.reports:
         for warning in report.warnings:
             progress.stage(f"warning: {warning}")
+    regions = _regions(settings, grid, progress)  # now, so that a bad file costs no computing
     layers = screen_dataset(loaded.dataset, settings)
     require_space(output, needed_bytes(grid, [str(name) for name in layers.data_vars]))
     now = datetime.now(UTC)
@@ -144,13 +145,14 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
                 attributes=_attributes(settings, loaded.reports, now),
                 on_progress=lambda _what, done, total: progress.advance(done, total),
             )
-        progress.stage("Ranking the regions")
-        regions = _regions(settings, grid, stage, progress)
+        table = None
         if regions is not None:
-            write_region_table(regions, stage / REGION_TABLE)
+            progress.stage("Ranking the regions")
+            table = _ranked(settings, grid, regions, stage)
+            write_region_table(table, stage / REGION_TABLE)
         progress.stage("Publishing")
         release = publish(stage, output, keep=settings.release.keep, stamp=release_stamp(now))
-    return ScreenResult(release, output / "current", regions)
+    return ScreenResult(release, output / "current", table)
 
 
 def cell(settings: Settings, latitude: float, longitude: float) -> dict[str, Any]:
@@ -286,19 +288,21 @@ def _threads() -> Iterator[None]:
         yield
 
 
-def _regions(
-    settings: Settings, grid: Grid, product: Path, progress: Progress
-) -> pd.DataFrame | None:
-    """The region table from the layers just written, or None without regions."""
+def _regions(settings: Settings, grid: Grid, progress: Progress) -> Regions | None:
+    """The regions that the settings ask for, if any."""
     wanted = settings.regions
     if wanted is None:
         return None
-    if wanted.path is not None:
-        regions = read_regions(settings.resolve(wanted.path), wanted.name)
-    else:
-        regions = box_regions(grid.bounds, wanted.boxes or 0.0)
+    if wanted.path is None:
+        return box_regions(grid.bounds, wanted.boxes or 0.0)
+    regions = read_regions(settings.resolve(wanted.path), wanted.name)
     for note in regions.notes:
         progress.stage(f"warning: {note}")
+    return regions
+
+
+def _ranked(settings: Settings, grid: Grid, regions: Regions, product: Path) -> pd.DataFrame:
+    """The region table from the layers just written."""
     layers = {name: read_layer(product, name) for name in RANKED_LAYERS}
     return region_table(layers, coverage(regions, grid), ground_cover=settings.panel.ground_cover)
 

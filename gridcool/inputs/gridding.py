@@ -29,6 +29,9 @@ ROUNDING = 1e-6
 class Gridding:
     """Weights from a file's cells to a target grid, rows and columns apart.
 
+    Sums are double precision: a constant stays that constant in single precision, and no mean
+    leaves the range of its parts by rounding, such as a share beyond 1.
+
     Attributes
     ----------
     rows : sparse matrix, shape (target rows, source rows)
@@ -63,12 +66,13 @@ class Gridding:
         shape = (*values.shape[:-2], down.shape[0], across.shape[0])
         planes = values.reshape(-1, *values.shape[-2:])
         result = np.empty((len(planes), *shape[-2:]), np.float32)
-        covered = np.outer(_row_sums(down), _row_sums(across))
+        # Summed in the same order with and without gaps, so that strips agree to the last bit.
+        covered = _both(down, np.ones(planes.shape[1:]), across)
         for plane, out in zip(planes, result, strict=True):
             missing = np.isnan(plane)
             if missing.any():
                 total = _both(down, np.where(missing, 0, plane), across)
-                weight = _both(down, (~missing).astype(np.float32), across)
+                weight = _both(down, ~missing, across)
             else:
                 total, weight = _both(down, plane, across), covered
             enough = weight >= VALID_SHARE - ROUNDING
@@ -112,7 +116,7 @@ def _weights(
     step = float(np.median(np.diff(edges)))
     target_step = float(np.median(np.diff(target_edges)))
     if len(edges) == len(target_edges) and np.abs(edges - target_edges).max() < 1e-3 * step:
-        return sparse.identity(len(centres), np.float32, format="csr"), "unchanged"
+        return sparse.identity(len(centres), format="csr"), "unchanged"
     turns = (-720.0, -360.0, 0.0, 360.0, 720.0) if periodic else (0.0,)
     if target_step >= step * (1 - 1e-3):
         shape = (len(target_centres), len(centres))
@@ -120,7 +124,7 @@ def _weights(
             (_overlaps(edges + turn, target_edges, polar=polar, shape=shape) for turn in turns),
             start=sparse.csr_matrix(shape, dtype=np.float64),
         )
-        return matrix.astype(np.float32).tocsr(), "averaged by area"
+        return matrix.tocsr(), "averaged by area"
     return _linear(edges, centres, target_centres, periodic=periodic, closes=closes), (
         "interpolated bilinearly"
     )
@@ -152,7 +156,8 @@ def _linear(
     closes: bool,
 ) -> Any:
     """Linear interpolation between centres; beyond the last one, to the outer edge, its value."""
-    places = edges[0] + np.mod(targets - edges[0], 360.0) if periodic else targets
+    start = edges[0] - ROUNDING
+    places = start + np.mod(targets - start, 360.0) if periodic else targets
     inside = (places >= edges[0] - ROUNDING) & (places <= edges[-1] + ROUNDING)
     if closes:
         knots = np.concatenate([[centres[-1] - 360], centres, [centres[0] + 360]])
@@ -174,12 +179,8 @@ def _linear(
         shape=(len(targets), len(centres)),
     )
     matrix.eliminate_zeros()
-    return matrix.astype(np.float32)
+    return matrix
 
 
-def _both(down: Any, plane: FloatArray, across: Any) -> FloatArray:
-    return np.asarray((across @ (down @ plane).T).T)
-
-
-def _row_sums(matrix: Any) -> FloatArray:
-    return np.asarray(matrix.sum(axis=1)).ravel()
+def _both(down: Any, plane: NDArray[Any], across: Any) -> FloatArray:
+    return np.asarray((across @ (down @ plane.astype(np.float64)).T).T)
