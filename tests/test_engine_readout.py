@@ -153,3 +153,11 @@ def test_albedo_part_is_the_change_of_the_flux() -> None:
         for a in (0.25, 0.27)
     ]
     assert float(part[0, 0]) == pytest.approx(runs[0] - runs[1], rel=0.02)
+
+
+@pytest.mark.parametrize("share", [0.0, 0.5, 1.0])
+def test_a_black_panel_of_any_finish_rejects_less_than_nothing(share: float) -> None:
+    """Nothing is reflected, and the ground's own light is forgone."""
+    black = solve(dataset([20.0], np.array(0.3)), Panel(0.0, share), CLOUDY).compute()
+    assert float(black["rejected_flux"][0, 0]) < 0
+    assert np.isnan(black["escape_fraction"].values).all()

@@ -103,7 +103,7 @@ def beam_coefficients(cells: Cells, panel: Panel) -> FloatArray:
     albedo = (cells.albedo * cells.counts)[:, None]
     escape = cells.escape[:, None]
     mirrored = np.float32(panel.reflectance * panel.specular_share)
-    matte = np.float32(panel.reflectance * (1 - panel.specular_share))
+    matte = np.float32(panel.matte)
     ground = albedo * escape  # α T_d
     lost = ground * m.ground_beam
     spread = matte / 2 * escape * counts * m.ground_beam
@@ -189,7 +189,7 @@ def diffuse_parts(cells: Cells, panel: Panel) -> DiffuseParts:
     sky, whole = cells.diffuse_escape, cells.global_escape
     rho, back = np.float32(panel.reflectance), np.float32(panel.back_reflectance)
     mirrored = rho * np.float32(panel.specular_share)
-    matte = rho * np.float32(1 - panel.specular_share)
+    matte = np.float32(panel.matte)
     ground = sky * albedo
     escaping: tuple[FloatArray, ...] = (
         mirrored / 2 * ground + matte / 4 * (sky + ground),

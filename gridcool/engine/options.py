@@ -29,6 +29,11 @@ class Panel:
     specular_share: float = 1.0
     back_reflectance: float = 0.3
 
+    @property
+    def matte(self) -> float:
+        """Reflectance of the Lambertian part, ρ (1 − σ)."""
+        return self.reflectance * (1 - self.specular_share)
+
 
 @dataclass(frozen=True)
 class Sky:

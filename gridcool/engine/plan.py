@@ -59,7 +59,7 @@ class RowTables:
     def of(response: Response, plan: Plan) -> RowTables:
         """Lay out a row's path integrals for the matrix product."""
         integrals = response.panel
-        if plan.panel.specular_share < 1:
+        if plan.panel.matte > 0:
             cosine = np.cos(np.deg2rad(plan.orientations.tilt)).astype(np.float32)
             front = (integrals[..., 2:3, :] + integrals[..., 3:4, :]) * cosine
             integrals = np.concatenate([integrals, front], axis=-2)
