@@ -3,196 +3,42 @@
 from __future__ import annotations
 
 import difflib
-import math
 import tomllib
 from pathlib import Path
-from typing import Annotated, Any, Literal, Self
+from typing import Any, Self
 
-from pydantic import (
-    BaseModel,
-    BeforeValidator,
-    ConfigDict,
-    Field,
-    ValidationError,
-    model_validator,
-)
+from pydantic import BaseModel, Field, ValidationError, model_validator
 
 from gridcool.errors import SettingsError
-from gridcool.variables import input_variables, layer_variables
+from gridcool.planning_sections import (
+    Criterion,
+    Exclude,
+    Ranking,
+    Regions,
+    Suitability,
+    SuitabilityClass,
+    Target,
+    Zones,
+)
+from gridcool.sections import (
+    Compute,
+    GridSection,
+    Input,
+    Job,
+    Layers,
+    Panel,
+    Release,
+    Section,
+    Sky,
+    Uncertainty,
+    Worth,
+)
+from gridcool.variables import input_variables
 
 REQUIRED_INPUTS = ("albedo",)
 
 
-def _number(value: Any) -> Any:
-    """Let a whole number stand where a fraction is wanted, and nothing else."""
-    return float(value) if isinstance(value, int) and not isinstance(value, bool) else value
-
-
-Number = Annotated[float, BeforeValidator(_number), Field(allow_inf_nan=False)]
-Share = Annotated[Number, Field(ge=0, le=1)]
-
-
-class _Section(BaseModel):
-    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
-
-
-class Job(_Section):
-    """Free name of the job and the folder of its products."""
-
-    name: str = "gridcool"
-    output: str = "out"
-
-
-class Input(_Section):
-    """One input file: where it lies and, if it does not say so itself, what it holds.
-
-    ``divisor_*`` make the input a ratio of two variables, such as upwelling over downwelling
-    shortwave for the albedo; where the divisor is below ``divisor_minimum`` the ratio is missing.
-    """
-
-    path: str
-    variable: str | None = None
-    units: str | None = None
-    hours: Literal["utc", "local-solar"] = "utc"
-    divisor_path: str | None = None
-    divisor_variable: str | None = None
-    divisor_minimum: Annotated[Number, Field(ge=0)] = 5.0
-
-
-class GridSection(_Section):
-    """The target grid: that of an input, or square cells within bounds (default: the globe)."""
-
-    like: str | None = None
-    resolution: Annotated[Number, Field(gt=0, le=30)] | None = None
-    bounds: Annotated[list[Number], Field(min_length=4, max_length=4)] | None = None
-
-    @model_validator(mode="after")
-    def _one_way(self) -> Self:
-        if self.like is not None and self.resolution is not None:
-            raise ValueError("give either like or resolution, not both")
-        if self.bounds is not None and self.resolution is None:
-            raise ValueError("bounds need a resolution")
-        if self.bounds is not None:
-            west, south, east, north = self.bounds
-            if not -90 <= south < north <= 90:
-                raise ValueError("bounds are [west, south, east, north] with south below north")
-            if not (-180 <= west < 360 and 0 < _width(west, east) <= 360):
-                raise ValueError("bounds are [west, south, east, north] in degrees east")
-        if self.resolution is not None:
-            _refuse_overlap(self.resolution, self.bounds or [-180.0, -90.0, 180.0, 90.0])
-        return self
-
-
-def _width(west: float, east: float) -> float:
-    """Degrees from west to east; an east that is not east of west lies past 180."""
-    return east - west if east > west else east - west + 360.0
-
-
-def _refuse_overlap(step: float, bounds: list[float]) -> None:
-    """Refuse cells that would go round more than once or reach past the south pole."""
-    west, south, east, north = bounds
-    for extent, room in ((north - south, north + 90.0), (_width(west, east), 360.0)):
-        if math.ceil(extent / step - 1e-6) * step > room + 1e-6:
-            fits = extent / max(1, round(extent / step))
-            raise ValueError(
-                f"cells of {step!r} degrees do not fill {extent:g} degrees evenly and would reach "
-                f"past the globe; {fits!r} fits"
-            )
-
-
-class Sky(_Section):
-    """How irradiance is estimated and what clouds and snow do."""
-
-    irradiance: Literal["cloud", "temperature-range", "blend", "measured"] = "blend"
-    cloud_concentration: Annotated[Number, Field(gt=0.05, le=20)] = 1.0
-    cloud_weight: Share = 0.7
-    hargreaves_coefficient: Annotated[Number, Field(gt=0.05, lt=0.5)] = 0.16
-    overcast_transmittance: Annotated[Number, Field(gt=0, lt=1)] = 0.22
-    overcast_reflectance: Annotated[Number, Field(gt=0, lt=1)] = 0.68
-    snow_albedo: Share = 0.5
-    snow_covers_panel: bool = True
-
-    @model_validator(mode="after")
-    def _no_gain(self) -> Self:
-        if self.overcast_transmittance + self.overcast_reflectance > 1:
-            raise ValueError("overcast_transmittance and overcast_reflectance exceed 1 together")
-        return self
-
-
-class Panel(_Section):
-    """The reflector and how densely a field of it covers the ground."""
-
-    reflectance: Share = 0.92
-    soiling: Share = 0.03
-    specular_share: Share = 1.0
-    back_reflectance: Share = 0.3
-    ground_cover: Annotated[Number, Field(gt=0, le=1)] = 0.3
-    lifetime_years: Annotated[Number, Field(gt=0, le=200)] = 25.0
-
-
-class Worth(_Section):
-    """What the flux is worth in other terms."""
-
-    carbon_dioxide_ppm: Annotated[Number, Field(gt=150, lt=2000)] = 425.0
-    panel_mass: Annotated[Number, Field(gt=0)] = 10.0
-    embodied_energy: Annotated[Number, Field(ge=0)] = 150.0
-    cost_low: Annotated[Number, Field(ge=0)] = 14.0
-    cost_high: Annotated[Number, Field(ge=0)] = 100.0
-
-
-class Uncertainty(_Section):
-    """Stated standard errors of the inputs."""
-
-    albedo: Annotated[Number, Field(ge=0, le=0.3)] = 0.02
-    concentration_factor: Annotated[Number, Field(gt=0, le=5)] = 0.6
-
-
-class Layers(_Section):
-    """Layers wanted beyond the usual ones."""
-
-    extra: list[str] = []
-
-    @model_validator(mode="after")
-    def _known(self) -> Self:
-        offered = [name for name, layer in layer_variables().items() if layer.on_request]
-        for name in self.extra:
-            if name not in offered:
-                near = difflib.get_close_matches(name, offered, n=1, cutoff=0.5)
-                hint = (
-                    f"did you mean {near[0]}?" if near else f"on request are {', '.join(offered)}"
-                )
-                raise ValueError(f"extra: there is no layer {name} on request; {hint}")
-        return self
-
-
-class Regions(_Section):
-    """Polygons with a name attribute, or boxes of some degrees."""
-
-    path: str | None = None
-    name: str | None = None
-    boxes: Annotated[Number, Field(gt=0, le=90)] | None = None
-
-    @model_validator(mode="after")
-    def _one_way(self) -> Self:
-        if (self.path is None) == (self.boxes is None):
-            raise ValueError("give either path (a polygon file) or boxes (degrees)")
-        return self
-
-
-class Compute(_Section):
-    """How much memory the run may take and what computes its blocks."""
-
-    memory: Annotated[str, Field(pattern=r"^\s*\d+(\.\d+)?\s*[kMGT]i?B\s*$")] = "2 GB"
-    scheduler: Literal["threads"] = "threads"
-
-
-class Release(_Section):
-    """How many releases stay on disk."""
-
-    keep: Annotated[int, Field(ge=1)] = 3
-
-
-class Settings(_Section):
+class Settings(Section):
     """The whole settings file. Relative paths start from the file's own folder, ``base``."""
 
     job: Job = Job()
@@ -203,7 +49,14 @@ class Settings(_Section):
     worth: Worth = Worth()
     uncertainty: Uncertainty = Uncertainty()
     layers: Layers = Layers()
+    exclude: list[Exclude] = Field(default_factory=list)
+    criterion: list[Criterion] = Field(default_factory=list)
+    suitability: Suitability = Suitability()
+    suitability_class: list[SuitabilityClass] = Field(default_factory=list)
     regions: Regions | None = None
+    ranking: Ranking = Ranking()
+    zones: Zones | None = None
+    target: Target | None = None
     compute: Compute = Compute()
     release: Release = Release()
     base: Path = Field(default=Path(), exclude=True)
@@ -221,9 +74,27 @@ class Settings(_Section):
         missing = _missing_for(self.sky.irradiance, set(self.inputs))
         if missing:
             problems.append(f'[sky] irradiance = "{self.sky.irradiance}" needs {missing}')
+        problems += self._planning_problems()
         if problems:
             raise ValueError("; ".join(problems))
         return self
+
+    def _planning_problems(self) -> list[str]:
+        """What the sections of planning need of each other."""
+        needs = {"[zones]": self.zones, "[[suitability_class]]": self.suitability_class}
+        found = [
+            f"{section} needs at least one [[criterion]]"
+            for section, given in needs.items()
+            if given and not self.criterion
+        ]
+        if self.ranking.by == "suitability" and not self.criterion:
+            found.append('[ranking] by = "suitability" needs at least one [[criterion]]')
+        if self.target is not None and self.regions is None:
+            found.append("[target] needs [regions]")
+        limits = [each.above for each in self.suitability_class]
+        if sorted(set(limits)) != limits:
+            found.append("[[suitability_class]] stand from the lowest limit to the highest")
+        return found
 
     def resolve(self, path: str) -> Path:
         """An absolute path from one that the settings file names."""
@@ -284,7 +155,7 @@ def settings_from(
 
 
 def _sentence(error: Any) -> str:
-    where, got = ".".join(str(part) for part in error["loc"]), repr(error["input"])
+    where, got = _place(error["loc"]), repr(error["input"])
     if error["type"] == "extra_forbidden":
         return f"Unknown key {where}; {_did_you_mean(error['loc'])}"
     if error["type"] == "missing":
@@ -299,9 +170,17 @@ def _sentence(error: Any) -> str:
     return f"{where}: {error['msg']} (found {got})."
 
 
+def _place(location: tuple[Any, ...]) -> str:
+    """A key as people count: the second [[exclude]] is exclude[2]."""
+    parts = [f"[{part + 1}]" if isinstance(part, int) else f".{part}" for part in location]
+    return "".join(parts).removeprefix(".")
+
+
 def _did_you_mean(location: tuple[Any, ...]) -> str:
     model: Any = Settings
     for part in location[:-1]:
+        if isinstance(part, int):  # one of several tables of the same kind
+            continue
         if model is None:
             return ""
         model = Input if model == "inputs" else _section(model, str(part))

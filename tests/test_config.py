@@ -274,3 +274,74 @@ def test_settings_cannot_be_changed() -> None:
         settings.panel.reflectance = 0.5
     with pytest.raises(ValidationError, match="frozen"):
         settings.inputs["albedo"].path = "other.nc"
+
+
+CRITERION = {"layer": "rejected_flux", "worst": 40, "best": 160, "weight": 0.6}
+
+
+def test_planning_sections_take_numbers_and_lists() -> None:
+    settings = settings_from(
+        {
+            "inputs": INPUTS,
+            "exclude": [
+                {"layer": "slope", "above": 15, "reason": "too steep"},
+                {"layer": "cover", "equals": [1, 5], "reason": "water", "missing": "out"},
+            ],
+            "criterion": [
+                CRITERION,
+                {"layer": "slope", "worst": [0, 20], "ideal": 5, "weight": 1},
+            ],
+            "suitability_class": [{"name": "fair", "above": 0.4}, {"name": "good", "above": 0.7}],
+            "regions": {"path": "codes.tif", "codes": {"1": "North"}},
+            "zones": {"suitability": 0.7, "minimum_area_km2": 50},
+            "target": {"rejected_power_tw": 0.1, "panel_km2_per_year": 100},
+        }
+    )
+    assert settings.exclude[0].above == 15.0
+    assert settings.exclude[1].equals == [1.0, 5.0]
+    assert settings.criterion[0].worst == [40.0]
+    assert settings.criterion[1].ideal == 5.0
+    assert settings.ranking.top == 3
+
+
+@pytest.mark.parametrize(
+    ("sections", "words"),
+    [
+        (
+            {"exclude": [{"layer": "slope", "abov": 3, "reason": "x"}]},
+            ("exclude[1].abov", "did you mean above?"),
+        ),
+        (
+            {"exclude": [{"layer": "slope", "reason": "x"}]},
+            ("exclude[1]", "above, below or equals"),
+        ),
+        ({"criterion": [{**CRITERION, "best": None}]}, ("criterion[1]", "give best, or ideal")),
+        ({"criterion": [{**CRITERION, "worst": 160}]}, ("other than best",)),
+        (
+            {"criterion": [{"layer": "a", "worst": [0, 5], "ideal": 9}]},
+            ("ideal lies between the two",),
+        ),
+        ({"criterion": [{**CRITERION, "weight": 0}]}, ("criterion[1].weight",)),
+        ({"zones": {"suitability": 0.5}}, ("[zones] needs at least one [[criterion]]",)),
+        (
+            {"suitability_class": [{"name": "good", "above": 0.7}]},
+            ("[[suitability_class]] needs at least one",),
+        ),
+        ({"ranking": {"by": "suitability"}}, ("[ranking] by",)),
+        ({"target": {"rejected_power_tw": 1.0}}, ("[target] needs [regions]",)),
+        (
+            {
+                "criterion": [CRITERION],
+                "suitability_class": [
+                    {"name": "good", "above": 0.7},
+                    {"name": "fair", "above": 0.4},
+                ],
+            },
+            ("from the lowest limit to the highest",),
+        ),
+    ],
+)
+def test_planning_sections_are_checked(sections: dict[str, Any], words: tuple[str, ...]) -> None:
+    message = refused(**sections)
+    for each in words:
+        assert each in message
