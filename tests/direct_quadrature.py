@@ -16,7 +16,6 @@ from typing import Any
 
 import numpy as np
 from direct_sky import (
-    DIFFUSE_AIR_MASS,
     Air,
     Array,
     Sky,
@@ -155,7 +154,7 @@ def build_scene(
     distance = distance[lit]
 
     columns = air_of(cell)
-    t_d, r_d = columns.escape(DIFFUSE_AIR_MASS, DIFFUSE_AIR_MASS)
+    t_d, r_d = columns.diffuse_escape()
     bins = np.asarray(cell.cloud).reshape(12, -1).shape[1]
     hour_bin = np.minimum((hour * bins / 24).astype(int), bins - 1)
     by_month = expectations(cell, sky, t_d, r_d)

@@ -6,6 +6,7 @@ Shares nothing with the package. Angles are radians unless a name says degrees.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -17,6 +18,7 @@ Array = NDArray[np.float64]
 DIFFUSE_AIR_MASS = 1.66
 AEROSOL_FORWARD = 0.84
 AEROSOL_SCATTERING_SHARE = 0.9
+ASYMMETRY = 0.65  # Henyey & Greenstein
 
 
 @dataclass(frozen=True)
@@ -106,12 +108,54 @@ class Air:
     def escape(self, m_down: Any, m_up: Any) -> tuple[Any, Any]:
         """Shares of a ray that leave upwards (T) and are scattered back down (R)."""
         left = self.absorption(m_down + m_up) / self.absorption(m_down)
-        by_gas = 1 - self.rayleigh(m_up)
-        by_dust = 1 - self.aerosol_scattering(m_up)
-        unscattered = (1 - by_gas) * (1 - by_dust)
-        onward = (0.5 * by_gas + AEROSOL_FORWARD * by_dust) / (by_gas + by_dust)
-        scattered = 1 - unscattered
-        return left * (unscattered + onward * scattered), left * (1 - onward) * scattered
+        back = self.sent_back(m_up)
+        return left * (1 - back), left * back
+
+    def sent_back(self, m: Any) -> Any:
+        """Meador & Weaver (1980): conservative two streams, hybrid of Eddington and delta."""
+        mu = np.minimum(1 / np.asarray(m), 1.0)
+        gas, dust = -np.log(self.rayleigh(m)), -np.log(self.aerosol_scattering(m))
+        tau = (gas + dust) * mu
+        share = dust / (gas + dust)
+        g, turned = ASYMMETRY, turned_round(mu)
+        hybrid = (3 + g * (-3 + g * (3 * (g - 1) + 4 * turned))) / (4 * (1 - g * g * (1 - mu)))
+        gamma_1 = (1 - share) * 0.75 + share * hybrid
+        gamma_3 = (1 - share) * 0.5 + share * turned
+        first = (gamma_3 - gamma_1 * mu) * (1 - np.exp(-tau / mu))
+        return (gamma_1 * tau + first) / (1 + gamma_1 * tau)
+
+    def diffuse_escape(self) -> tuple[Any, Any]:
+        """The same for isotropic light: absorbed at one air mass, scattered at all slants."""
+        m = DIFFUSE_AIR_MASS
+        left = self.absorption(2 * m) / self.absorption(m)
+        slants = (np.arange(400) + 0.5) / 400
+        back = sum(2 * mu * self.sent_back(1 / mu) for mu in slants) / 400
+        return left * (1 - back), left * back
+
+
+TURNED_AT = np.linspace(0, 1, 201)
+
+
+def turned_round(mu: Any) -> Any:
+    """Share of Henyey & Greenstein's single scattering that turns round."""
+    return np.interp(mu, TURNED_AT, turned_table())
+
+
+@cache
+def turned_table() -> Array:
+    """By brute integration, at the cosines of `TURNED_AT`.
+
+    A direction at polar cosine u' on the far side of the horizon plane, at every azimuth.
+    """
+    u = -(np.arange(200) + 0.5) / 200
+    angle = np.pi * (np.arange(200) + 0.5) / 200
+    sines = np.sqrt(1 - u**2)[:, None] * np.cos(angle)
+    values = []
+    for each in TURNED_AT:
+        cosine = each * u[:, None] + np.sqrt(1 - each**2) * sines
+        g = ASYMMETRY
+        values.append(0.5 * ((1 - g * g) / (1 + g * g - 2 * g * cosine) ** 1.5).mean())
+    return np.array(values)
 
 
 def clear_sky(air: Air, m: Array, up: Array, extraterrestrial: Array) -> tuple[Array, Array]:

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from direct_optimum import best_orientation
 from direct_quadrature import CLOUD_CLASSES, Panel, air_of, build_scene, evaluate, expectations
-from direct_sky import DIFFUSE_AIR_MASS, Sky, cloud_classes, moment_of_sky
+from direct_sky import Sky, cloud_classes, moment_of_sky
 from invented_cells import random_cells
 from scipy.integrate import quad
 from scipy.special import beta
@@ -41,7 +41,7 @@ def test_cloud_classes_at_the_ends() -> None:
 def test_expectations_are_by_month_and_hour() -> None:
     cell = CELLS[-1]
     bins = cell.cloud.shape[1]
-    t_d, r_d = air_of(cell).escape(DIFFUSE_AIR_MASS, DIFFUSE_AIR_MASS)
+    t_d, r_d = air_of(cell).diffuse_escape()
     mean = expectations(cell, Sky(), t_d, r_d)
     assert mean.k.shape == (12, bins)
     order = np.argsort(cell.cloud[3])

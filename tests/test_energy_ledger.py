@@ -14,7 +14,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from invented_cells import random_cells
 
-from gridcool.physics import atmosphere, clouds, panel, sun
+from gridcool.physics import atmosphere, clouds, escape, panel, sun
 from gridcool.physics.atmosphere import Atmosphere
 
 BARE_SKY = Sky(snow_covers_panel=False)
@@ -81,8 +81,8 @@ def test_ledger_of_the_kernels(
         after = atmosphere.absorption_transmittance(column, m_down + m_up)
         return float(1 - after / atmosphere.absorption_transmittance(column, m_down))
 
-    ray_up, ray_back = atmosphere.ray_escape(column, down, up)
-    light_up, light_back = atmosphere.diffuse_escape(column)
+    ray_up, ray_back = escape.ray_escape(column, down, up)
+    light_up, light_back = escape.diffuse_escape(column)
     optics = Optics(
         ground=ground,
         ray_up=float(ray_up),
@@ -135,7 +135,7 @@ def test_ledger_gives_the_rejected_flux(
     scene = build_scene(cell, BARE_SKY, steps_per_day=24)
     expected = evaluate(scene, mirror, tilt, azimuth).monthly
     columns, face = air_of(cell), normal(tilt, azimuth)
-    t_d, r_d = columns.escape(DIFFUSE_AIR_MASS, DIFFUSE_AIR_MASS)
+    t_d, r_d = columns.diffuse_escape()
     for month in (0, 6):
         here = scene.month == month
         if not here.any():

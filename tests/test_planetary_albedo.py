@@ -80,10 +80,10 @@ def area_mean(values: np.ndarray, latitudes: np.ndarray, where: np.ndarray) -> f
 
 # Bands of annual cloud fraction, and the least and most of account over kernel among their cells.
 CLOUD_BANDS = (
-    (0.0, 0.4, 1.00, 1.06),
-    (0.4, 0.6, 0.99, 1.05),
-    (0.6, 0.8, 0.94, 1.04),
-    (0.8, 0.9, 0.80, 1.00),
+    (0.0, 0.4, 0.99, 1.05),
+    (0.4, 0.6, 0.98, 1.04),
+    (0.6, 0.8, 0.92, 1.03),
+    (0.8, 0.9, 0.78, 0.99),
     (0.9, 1.01, 0.60, 0.95),
 )
 
@@ -91,9 +91,9 @@ CLOUD_BANDS = (
 def test_flat_matt_panel_against_albedo_kernel_over_the_globe() -> None:
     """CACK, Bright & O'Halloran (2019), GMD 12, SW_down √(SW_down/SW_toa), 60°S to 60°N.
 
-    The mean agrees to 1 % and five cells in six to 5 %; the kernel's own rms against four models
+    The mean agrees to 1.4 % and four cells in five to 5 %; the kernel's own rms against four models
     is 14 %. Where the sky is nearly always overcast (above 0.85, the Southern Ocean) the account
-    falls to 0.63 of the kernel: it lets 0.22 of the light through a closed deck on the way up, as
+    falls to 0.62 of the kernel: it lets 0.22 of the light through a closed deck on the way up, as
     on the way down, where the kernel takes the square root.
     """
     dataset, ours, theirs, whole = globe()
@@ -109,7 +109,7 @@ def test_flat_matt_panel_against_albedo_kernel_over_the_globe() -> None:
     usual = known & (cloud < 0.85)
     spread = float(np.sqrt(((ratio[usual] - 1) ** 2).mean()))
     print(f"account over kernel: mean {of_means(known):.3f}; cloud below 0.85: rms {spread:.3f}")
-    assert of_means(known) == pytest.approx(1, abs=0.01)
+    assert of_means(known) == pytest.approx(1, abs=0.02)
     assert spread < 0.03
     assert (np.abs(ratio[known] - 1) < 0.05).mean() > 0.8
     for south in range(-60, 60, 20):
@@ -133,9 +133,10 @@ def test_ground_light_that_reaches_space(clear: bool) -> None:
     """CMIP6 ACCESS-ESM1-5, 5 × 5 cells at the equator; escape of the ground's light per cell.
 
     X01: the account lies above a single layer that absorbs alike both ways (Donohoe & Battisti
-    2011) and 1 to 3 % above CACK, so just outside. A layer that absorbs on the way down only (APRP;
-    Taylor et al. 2007) lies above it under a clear sky (0.904 to 0.858), and 6 % below it with
-    clouds (0.691 to 0.733). A black flat panel takes away just what the ground sent to space.
+    2011) and, with clouds, just below CACK (0.722 to 0.724), so between them; under a clear sky it
+    is 1.4 % above CACK (0.845 to 0.834), so just outside. A layer that absorbs on the way down only
+    (APRP; Taylor et al. 2007) lies above it under a clear sky (0.904), and below it with clouds
+    (0.691). A black flat panel takes away just what the ground sent to space.
     """
     suffix = "cs" if clear else ""
 
@@ -173,7 +174,7 @@ def test_ground_light_that_reaches_space(clear: bool) -> None:
         f"{(account * b).mean():.2f} of {b.mean():.2f}, first pass {(first_pass * b).mean():.2f}"
     )
     assert (account > single).all()
-    assert ((account / cack > 1.0) & (account / cack < 1.035)).all()
+    assert ((account / cack > 0.99) & (account / cack < (1.02 if clear else 1.0))).all()
     assert ((account / first_pass > 0.92) & (account / first_pass < 1.08)).all()
     assert (np.abs(share / account - 1) > 0.15).all()  # the way down's transmission, taken grey
     assert (account < 0.9).all()  # some is lost on the way up

@@ -18,6 +18,7 @@ from engine_cells import dataset_of, solved
 
 from gridcool.engine.options import Panel
 from gridcool.physics import atmosphere, climate, soil
+from gridcool.physics.escape import backscatter, ray_escape
 from gridcool.physics.sun import air_mass
 from gridcool.planning.worth import PanelCosts, cost_per_tonne_100yr, cost_per_tonne_standing
 
@@ -64,12 +65,12 @@ def test_seventy_to_eighty_percent_escape_a_clear_sky() -> None:
     column = atmosphere.Atmosphere(1.0, 1.5, 0.076, 0.3)
     for zenith in (0, 30, 60):
         m = float(air_mass(np.cos(np.radians(zenith))))
-        upward, returned = atmosphere.ray_escape(column, m, m)
-        unscattered, forward = atmosphere.scattering_transmittance(column, m)
+        upward, returned = ray_escape(column, m, m)
+        unscattered = float(atmosphere.scattering_transmittance(column, m))
         direct = float((upward + returned) * unscattered)
         assert 0.65 < direct < 0.83, "the part never scattered should be the saying's 70 to 80 %"
         grey = float(atmosphere.absorption_transmittance(column, m))
-        grey *= float(unscattered + forward * (1 - unscattered))
+        grey *= 1 - float(backscatter(column, m))
         assert 0.72 < grey < 0.83, "a grey sky should give the saying's 70 to 80 %"
         assert float(upward) > max(direct, grey) + 0.05
     cloudy = at_the_best_tilt()["escape_fraction"][CLOUDS.index(0.65)]
@@ -117,7 +118,7 @@ def test_what_the_plain_model_leaves_out(cloud: float) -> None:
     flux = at_the_best_tilt()["rejected_flux"][CLOUDS.index(cloud)]
     excess = flux / np.array(BEAM_ONLY[cloud]) - 1
     print(f"cloud {cloud}: above the beam-only model by", excess.round(2))
-    low, high = {0.0: (0.15, 0.25), 0.3: (0.35, 0.50), 0.65: (0.50, 0.80)}[cloud]
+    low, high = {0.0: (0.15, 0.25), 0.3: (0.33, 0.48), 0.65: (0.50, 0.80)}[cloud]
     assert ((excess > low) & (excess < high)).all()
     if cloud == 0.0:
         scene = build_scene(cell(0.0, 0.0), Sky())

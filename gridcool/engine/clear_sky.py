@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from gridcool.engine.columns import ColumnBasis, column_at, default_property
 from gridcool.engine.response import Response
 from gridcool.physics import atmosphere
+from gridcool.physics.escape import diffuse_escape
 from gridcool.variables import flag_value
 
 FloatArray = NDArray[np.floating]
@@ -69,7 +70,7 @@ def clear_sky_of(
     flat = {name: np.broadcast_to(p, shape).ravel() for name, p in properties.items()}
     weights = basis.weights(flat).reshape(basis.rank, *shape)
     column = column_at(latitude, properties)
-    escape, returned = atmosphere.diffuse_escape(column)
+    escape, returned = diffuse_escape(column)
     return ClearSky(
         weights=weights,
         beam=_combined(response.beam, weights),

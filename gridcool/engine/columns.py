@@ -18,7 +18,7 @@ from numpy.polynomial.chebyshev import chebvander
 from numpy.typing import NDArray
 from scipy.linalg import qr
 
-from gridcool.physics import atmosphere
+from gridcool.physics import atmosphere, escape
 from gridcool.physics.atmosphere import Atmosphere
 
 FloatArray = NDArray[np.floating]
@@ -174,7 +174,7 @@ def _functions(samples: Mapping[str, FloatArray]) -> FloatArray:
         column = _of_one_shape(column_at(0.0, {**samples, **extra}), count)
         one, two = column.at(np.s_[:, None]), column.at(np.s_[:, None, None])
         beam, scattered = atmosphere.clear_sky(one, down, 1 / down, 1.0)
-        escaped, returned = atmosphere.ray_escape(two, down[:, None], up)
+        escaped, returned = escape.ray_escape(two, down[:, None], up)
         weighted = (beam / down)[:, :, None] / np.sqrt(up) / 3
         parts += [weighted * escaped, weighted * returned, beam / down, scattered]
     return np.concatenate([part.reshape(count, -1) for part in parts], axis=1)

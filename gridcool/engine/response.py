@@ -15,7 +15,7 @@ from gridcool.engine.columns import ColumnBasis
 from gridcool.engine.glare import low_rays
 from gridcool.engine.orientations import Orientations
 from gridcool.engine.quadrature import hour_nodes, month_days
-from gridcool.physics import atmosphere, panel, sun
+from gridcool.physics import atmosphere, escape, panel, sun
 from gridcool.physics.atmosphere import Atmosphere
 
 FloatArray = NDArray[np.floating]
@@ -146,8 +146,8 @@ def _month(
 class _Ways:
     """The way out of each column by the air masses of `_PATHS`, shape (rank, paths).
 
-    ``transmitted`` is T_abs of the whole path, ``returned`` the share (1 − φ)(1 − T_s) of what is
-    left that the rising ray's own path sends back.
+    ``transmitted`` is T_abs of the whole path, ``returned`` the share of what is left that the
+    rising ray's own path sends back.
     """
 
     transmitted: FloatArray
@@ -156,9 +156,8 @@ class _Ways:
     @staticmethod
     def of(column: Atmosphere) -> _Ways:
         each = column.at(np.s_[:, None])
-        unscattered, forward = atmosphere.scattering_transmittance(each, _PATHS)
         transmitted = atmosphere.absorption_transmittance(each, _PATHS)
-        return _Ways(transmitted, (1 - forward) * (1 - unscattered))
+        return _Ways(transmitted, escape.backscatter(each, _PATHS))
 
 
 def _panel_terms(

@@ -1,4 +1,4 @@
-"""The cloudless atmosphere: broadband transmittances down, and what escapes back up.
+"""The cloudless atmosphere: broadband transmittances and the light they let down.
 
 Transmittances are those of Bird & Hulstrom (1981), A Simplified Clear Sky Model for Direct and
 Diffuse Insolation on Horizontal Surfaces, SERI/TR-642-761, with two guards near the horizon, where
@@ -130,27 +130,12 @@ def absorption_transmittance(atmosphere: Atmosphere, air_mass: ArrayLike) -> Flo
     )
 
 
-def scattering_transmittance(
-    atmosphere: Atmosphere, air_mass: ArrayLike
-) -> tuple[FloatArray, FloatArray]:
-    """What scattering leaves in a ray, and where the scattered part goes.
-
-    Returns
-    -------
-    unscattered : array
-        T_s = T_R T_AS, with T_AS = T_A / T_AA.
-    forward_share : array
-        φ, the share of the scattered part that goes on in the ray's own direction (upward for a
-        rising ray): 0.5 for Rayleigh and 0.84 for aerosol, weighted by 1 − T_R and 1 − T_AS.
-    """
+def scattering_transmittance(atmosphere: Atmosphere, air_mass: ArrayLike) -> FloatArray:
+    """T_s = T_R T_AS: what scattering leaves in a beam, with T_AS = T_A / T_AA."""
     m = np.asarray(air_mass)
     rayleigh = transmittance_rayleigh(atmosphere.pressure_ratio * m)
     aerosol = transmittance_aerosol(atmosphere.aerosol_depth, m) ** AEROSOL_SCATTERING_ALBEDO
-    lost_rayleigh, lost_aerosol = 1 - rayleigh, 1 - aerosol
-    lost = lost_rayleigh + lost_aerosol
-    forward = RAYLEIGH_FORWARD_SHARE * lost_rayleigh + AEROSOL_FORWARD_SHARE * lost_aerosol
-    share = np.divide(forward, lost, out=np.full_like(lost, RAYLEIGH_FORWARD_SHARE), where=lost > 0)
-    return np.asarray(rayleigh * aerosol), share
+    return np.asarray(rayleigh * aerosol)
 
 
 def clear_sky(
@@ -202,32 +187,3 @@ def sky_albedo(atmosphere: Atmosphere) -> FloatArray:
     return np.asarray(
         0.0685 + (1 - AEROSOL_FORWARD_SHARE) * (1 - aerosol**AEROSOL_SCATTERING_ALBEDO)
     )
-
-
-def ray_escape(
-    atmosphere: Atmosphere, air_mass_down: ArrayLike, air_mass_up: ArrayLike
-) -> tuple[FloatArray, FloatArray]:
-    """First pass of a ray that came down through one air mass and rises through another.
-
-    The way down has already emptied the strongly absorbed bands, so the way up absorbs only
-    A = T_abs(m_d + m_r) / T_abs(m_d).
-
-    Returns
-    -------
-    upward : array
-        T = A (T_s + φ (1 − T_s)), the share that leaves the atmosphere.
-    downward : array
-        R = A (1 − φ)(1 − T_s), the share sent back to the ground. T + R + absorbed = 1.
-    """
-    down, up = np.asarray(air_mass_down), np.asarray(air_mass_up)
-    absorption = absorption_transmittance(atmosphere, down + up) / absorption_transmittance(
-        atmosphere, down
-    )
-    unscattered, forward = scattering_transmittance(atmosphere, up)
-    returned = absorption * (1 - forward) * (1 - unscattered)
-    return np.asarray(absorption - returned), np.asarray(returned)
-
-
-def diffuse_escape(atmosphere: Atmosphere) -> tuple[FloatArray, FloatArray]:
-    """T_d and R_d of isotropic light from the ground: `ray_escape` at the diffuse air mass."""
-    return ray_escape(atmosphere, DIFFUSE_AIR_MASS, DIFFUSE_AIR_MASS)
