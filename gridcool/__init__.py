@@ -11,7 +11,7 @@ __all__ = ["__version__", "load_settings", "screen"]
 def __getattr__(name: str) -> Any:
     """Load the public functions on first use, so that ``import gridcool`` stays light."""
     if name == "screen":
-        from gridcool.pipeline import screen_dataset
+        from gridcool.parts import screen_dataset
 
         return screen_dataset
     if name == "load_settings":

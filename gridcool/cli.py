@@ -94,7 +94,8 @@ def _screen(options: argparse.Namespace) -> None:
 
 
 def _cell(options: argparse.Namespace) -> None:
-    facts = _pipeline().cell(_settings(options.settings), options.latitude, options.longitude)
+    place = importlib.import_module("gridcool.place")
+    facts = place.cell(_settings(options.settings), options.latitude, options.longitude)
     page = importlib.import_module("gridcool.products.cell")
     if options.figure is not None:
         page.draw_cell(facts, options.figure)

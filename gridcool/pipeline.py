@@ -2,32 +2,31 @@
 
 from __future__ import annotations
 
-import re
 from collections.abc import Iterator
-from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
-from typing import Any, Protocol
+from typing import Protocol
 
-import dask
 import pandas as pd
-import xarray as xr
-from threadpoolctl import threadpool_limits
 
 from gridcool import __version__
 from gridcool.config import Settings
-from gridcool.engine.blocks import explain, solve
-from gridcool.engine.options import Field, InputError, Panel, Sky
-from gridcool.errors import InputDataError, SettingsError
-from gridcool.grid import Bounds, Grid
-from gridcool.inputs.load import describe, load_inputs, target_grid
-from gridcool.inputs.spec import InputReport, InputSpec
-from gridcool.planning.explanation import EXTRA_LAYERS, cell_facts
+from gridcool.grid import Grid
+from gridcool.inputs.load import describe, load_inputs
+from gridcool.inputs.spec import InputReport
+from gridcool.parts import (
+    CAUTION,
+    bounds_text,
+    computing_threads,
+    grid_of,
+    screen_dataset,
+    specs_of,
+    strip_rows,
+)
 from gridcool.planning.ranking import LAYERS as RANKED_LAYERS
 from gridcool.planning.ranking import region_table
 from gridcool.planning.regions import Regions, box_regions, coverage, read_regions
-from gridcool.planning.worth import PanelCosts
 from gridcool.products.layers import write_layers
 from gridcool.products.reading import read_layer
 from gridcool.products.tables import write_region_table
@@ -39,7 +38,6 @@ from gridcool.release.publish import (
     require_space,
     staging_folder,
 )
-from gridcool.variables import layer_variables
 
 REGION_TABLE = "regions.csv"
 REFERENCES = (
@@ -48,12 +46,6 @@ REFERENCES = (
     "Kasten & Young 1989 Appl. Opt. 28; Meador & Weaver 1980 J. Atmos. Sci. 37; "
     "Donohoe & Battisti 2011 J. Climate 24"
 )
-CAUTION = (
-    "For screening only. Glare and aviation, fire from concave or damaged reflectors, wind "
-    "loading, broken glass, plants and wildlife under shade, rain and neighbours, and land rights "
-    "are not judged here: local codes and licensed engineers decide."
-)
-_UNITS = {"kB": 1e3, "MB": 1e6, "GB": 1e9, "TB": 1e12}
 
 
 class Progress(Protocol):
@@ -118,7 +110,7 @@ def check(settings: Settings) -> Iterator[str]:
     if any(report.errors for report in reports):
         load_inputs(specs, grid_of(settings, specs), 1)  # raises with all that is wrong
     grid = grid_of(settings, specs)
-    yield f"target grid  {grid.rows} rows × {grid.columns} columns, {_bounds_text(grid)}"
+    yield f"target grid  {grid.rows} rows × {grid.columns} columns, {bounds_text(grid)}"
 
 
 def screen(settings: Settings, progress: Progress) -> ScreenResult:
@@ -138,7 +130,7 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
     now = datetime.now(UTC)
     with staging_folder(output) as stage:
         progress.stage("Computing and writing the layers")
-        with _threads():
+        with computing_threads():
             write_layers(
                 layers,
                 grid,
@@ -154,139 +146,6 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
         progress.stage("Publishing")
         release = publish(stage, output, keep=settings.release.keep, stamp=release_stamp(now))
     return ScreenResult(release, output / "current", table)
-
-
-def cell(settings: Settings, latitude: float, longitude: float) -> dict[str, Any]:
-    """One place explained, as plain facts.
-
-    Raises
-    ------
-    InputDataError
-        If the place lies outside the target grid or nothing is known of it.
-    """
-    specs = specs_of(settings)
-    grid = grid_of(settings, specs)
-    row, column = _cell_at(grid, latitude, longitude)
-    inputs = load_inputs(specs, grid, 1).dataset
-    rows = slice(max(row - 1, 0), min(row + 2, grid.rows))
-    columns = [column + step for step in (-1, 0, 1)]
-    if grid.is_periodic:
-        columns = [each % grid.columns for each in columns]
-    columns = [each for each in columns if 0 <= each < grid.columns]
-    window = inputs.isel(latitude=rows, longitude=columns)
-    with _threads():
-        window = window.compute()
-        options = _engine_options(settings)
-        wanted = (*EXTRA_LAYERS, *settings.layers.extra)
-        layers = solve(window, **options, extra_layers=wanted).compute()
-        here = {"latitude": [row - rows.start], "longitude": [columns.index(column)]}
-        found = explain(window.isel(here), **options)
-    if found is None:
-        raise InputDataError(
-            f"Nothing is known at {latitude:g}, {longitude:g}: the albedo or every irradiance "
-            "estimate is missing there; choose another place or fill the inputs."
-        )
-    facts = cell_facts(layers, here["latitude"][0], here["longitude"][0], found, _costs(settings))
-    elevation = window.get("elevation")
-    height = None if elevation is None else float(elevation.isel(here).values[0, 0])
-    facts["place"]["elevation"] = "taken as sea level" if height is None else f"{height:.0f} m"
-    return {"title": settings.job.name, **facts, "caution": CAUTION}
-
-
-def _cell_at(grid: Grid, latitude: float, longitude: float) -> tuple[int, int]:
-    """Row and column of the cell that holds a place."""
-    bounds = grid.bounds
-    east = bounds.west + (longitude - bounds.west) % 360
-    if not bounds.south <= latitude <= bounds.north or east >= bounds.east:
-        raise InputDataError(
-            f"The place {latitude:g}, {longitude:g} lies outside the target grid "
-            f"({_bounds_text(grid)}); choose one inside."
-        )
-    row = min(int((bounds.north - latitude) / grid.latitude_step), grid.rows - 1)
-    return row, min(int((east - bounds.west) / grid.longitude_step), grid.columns - 1)
-
-
-def _costs(settings: Settings) -> PanelCosts:
-    worth = settings.worth
-    return PanelCosts(
-        lifetime_years=settings.panel.lifetime_years,
-        mass=worth.panel_mass,
-        embodied_energy=worth.embodied_energy,
-        cost_low=worth.cost_low,
-        cost_high=worth.cost_high,
-    )
-
-
-def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
-    """All layers of a dataset of canonical inputs, lazily.
-
-    Parameters
-    ----------
-    dataset : xarray.Dataset
-        As `gridcool.engine.blocks.solve` takes it.
-    settings : Settings
-        The sections sky, panel, worth, uncertainty and layers are used.
-    """
-    return solve(dataset, **_engine_options(settings), extra_layers=settings.layers.extra)
-
-
-def _engine_options(settings: Settings) -> dict[str, Any]:
-    """The settings as the engine's own numbers."""
-    return {
-        "panel": Panel(
-            reflectance=settings.panel.reflectance * (1 - settings.panel.soiling),
-            specular_share=settings.panel.specular_share,
-            back_reflectance=settings.panel.back_reflectance,
-        ),
-        "sky": Sky(**settings.sky.model_dump()),
-        "field": Field(settings.panel.ground_cover, settings.worth.carbon_dioxide_ppm),
-        "error": InputError(**settings.uncertainty.model_dump()),
-    }
-
-
-def specs_of(settings: Settings) -> list[InputSpec]:
-    """The inputs that the settings name, with absolute paths."""
-    specs = []
-    for name, given in settings.inputs.items():
-        fields = given.model_dump()
-        for key in ("path", "divisor_path"):
-            fields[key] = None if fields[key] is None else settings.resolve(fields[key])
-        specs.append(InputSpec(name=name, **fields))
-    return specs
-
-
-def grid_of(settings: Settings, specs: list[InputSpec]) -> Grid:
-    """The target grid that the settings ask for; that of the albedo where they say nothing."""
-    wanted = settings.grid
-    bounds = None if wanted.bounds is None else Bounds(*wanted.bounds)
-    like = "albedo" if wanted.like is None and wanted.resolution is None else wanted.like
-    return target_grid(specs, like=like, resolution=wanted.resolution, bounds=bounds)
-
-
-def strip_rows(grid: Grid, settings: Settings) -> int:
-    """Rows of a strip: few enough for the memory, many enough to keep the threads busy."""
-    bands = sum(layer.count for layer in layer_variables().values())
-    monthly = 12 * len(settings.inputs)
-    row_bytes = grid.columns * 4 * (2 * bands + 4 * monthly)
-    threads = dask.system.CPU_COUNT
-    affordable = _memory(settings) / 4 / threads / row_bytes
-    return max(1, min(int(affordable), 256, -(-grid.rows // (4 * threads))))
-
-
-def _memory(settings: Settings) -> float:
-    found = re.fullmatch(r"\s*(\d+(?:\.\d+)?)\s*([kMGT])(i?)B\s*", settings.compute.memory)
-    if found is None:
-        raise SettingsError(f"compute.memory: {settings.compute.memory!r} is not a size.")
-    number, prefix, binary = found.groups()
-    step = 1024 if binary else 1000
-    return float(float(number) * step ** ("kMGT".index(prefix) + 1))
-
-
-@contextmanager
-def _threads() -> Iterator[None]:
-    """Compute on threads of this process, with one BLAS thread each: both at full width fight."""
-    with dask.config.set(scheduler="threads"), threadpool_limits(1, "blas"):
-        yield
 
 
 def _regions(settings: Settings, grid: Grid, progress: Progress) -> Regions | None:
@@ -320,11 +179,3 @@ def _attributes(
         "references": REFERENCES,
         "comment": CAUTION,
     }
-
-
-def _bounds_text(grid: Grid) -> str:
-    b = grid.bounds
-    return (
-        f"{b.west:g} to {b.east:g} degrees east, {b.south:g} to {b.north:g} degrees north, "
-        f"cells of {grid.longitude_step:g} × {grid.latitude_step:g} degrees"
-    )

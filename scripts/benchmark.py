@@ -24,7 +24,7 @@ from threadpoolctl import threadpool_limits
 
 from gridcool.config import load_settings
 from gridcool.inputs.load import load_inputs
-from gridcool.pipeline import grid_of, screen_dataset, specs_of, strip_rows
+from gridcool.parts import grid_of, screen_dataset, specs_of, strip_rows
 
 SETTINGS = """
 [job]
