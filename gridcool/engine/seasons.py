@@ -1,7 +1,7 @@
 """A panel that is turned twice a year: which months belong together, and how to tilt it in each.
 
-The year is cut into two runs of neighbouring months. All 66 cuts are compared on every second
-candidate orientation; the best cut is then searched and refined on all of them.
+The year is cut into two runs of neighbouring months. All 66 cuts are compared on candidates about
+ten degrees apart; the best cut is then searched and refined on all of them.
 """
 
 from __future__ import annotations
@@ -56,22 +56,22 @@ def best_cut(monthly: FloatArray) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     start, length : array of int, shape (cells,)
         First month (0 to 11) and number of months of one of the two seasons.
     """
-    running = np.concatenate([np.zeros_like(monthly[:1]), np.cumsum(monthly, axis=0)])
+    _, orientations, cells = monthly.shape
+    # Sums from January on, half a year past December, so that no season has to be pieced together.
+    running = np.zeros((19, orientations, cells), np.float32)
+    for month in range(18):
+        np.add(running[month], monthly[month % 12], out=running[month + 1])
     whole = running[12]
-    cells = whole.shape[-1]
-    best = np.full(cells, -np.inf, np.float32)
-    start, length = np.zeros(cells, np.intp), np.zeros(cells, np.intp)
-    for first, months in month_cuts():
-        last = first + months
-        season = running[min(last, 12)] - running[first]
-        if last > 12:
-            season = season + running[last - 12]
-        value = season.max(axis=0) + (whole - season).max(axis=0)
-        better = value > best
-        best = np.where(better, value, best)
-        start = np.where(better, first, start)
-        length = np.where(better, months, length)
-    return start, length
+    cuts = np.array(month_cuts())
+    season, rest = np.empty_like(whole), np.empty_like(whole)
+    values = np.empty((len(cuts), cells), np.float32)
+    for value, (first, months) in zip(values, cuts, strict=True):
+        np.subtract(running[first + months], running[first], out=season)
+        np.subtract(whole, season, out=rest)
+        season.max(axis=0, out=value)
+        value += rest.max(axis=0)
+    best = values.argmax(axis=0)
+    return cuts[best, 0], cuts[best, 1]
 
 
 def season_mask(start: NDArray[np.intp], length: NDArray[np.intp]) -> NDArray[np.float32]:
