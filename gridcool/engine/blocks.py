@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Hashable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import dask.array as da
@@ -14,20 +14,17 @@ from numpy.typing import NDArray
 from gridcool.engine.clear_sky import COLUMN_INPUTS
 from gridcool.engine.columns import column_basis
 from gridcool.engine.explain import Explanation, explain_cell
+from gridcool.engine.layout import USED, check_range, check_shape, label_layers, strips_of
 from gridcool.engine.options import Field, InputError, Panel, Sky
 from gridcool.engine.orientations import compass, meridian
 from gridcool.engine.plan import Plan
 from gridcool.engine.response import Response, path_integrals
 from gridcool.engine.strips import layer_bands, solve_strip
-from gridcool.errors import InputDataError
-from gridcool.variables import input_variables, layer_variables
+from gridcool.variables import layer_variables
 
 FloatArray = NDArray[np.floating]
 
 LATITUDE_STEP = 2.5  # degrees between nodes of the path integrals
-VARYING = ("albedo", "cloud_fraction", "temperature_range")
-ERRORS = tuple(f"{name}_standard_error" for name in VARYING)
-USED = (*VARYING, "surface_shortwave", *COLUMN_INPUTS, *ERRORS)
 
 
 def solve(
@@ -67,8 +64,8 @@ def solve(
     InputDataError
         At once if dimensions do not fit; on computing if a value is impossible.
     """
-    plan = _plan(dataset, panel, sky, field, error, extra_layers)
-    return _label(_solve_lazily(dataset, plan), dataset, plan.layers)
+    plan = plan_for(dataset, panel, sky, field, error, extra_layers)
+    return label_layers(_solve_lazily(dataset, plan), dataset, plan.layers)
 
 
 def explain(
@@ -83,7 +80,7 @@ def explain(
 
     Parameters are those of `solve`.
     """
-    plan = _plan(dataset, panel, sky, field, error, ())
+    plan = plan_for(dataset, panel, sky, field, error, ())
     latitude = float(dataset["latitude"].values[0])
     index, weights = latitude_stencil(latitude)
     nodes = [
@@ -91,12 +88,12 @@ def explain(
         for i in index
     ]
     inputs = {
-        name: np.asarray(_strips(dataset, name)[..., 0, :]) for name in USED if name in dataset
+        name: np.asarray(strips_of(dataset, name)[..., 0, :]) for name in USED if name in dataset
     }
     return explain_cell(plan, inputs, latitude, Response.blend(nodes, weights))
 
 
-def _plan(
+def plan_for(
     dataset: xr.Dataset,
     panel: Panel | None,
     sky: Sky | None,
@@ -104,7 +101,8 @@ def _plan(
     error: InputError | None,
     extra_layers: Sequence[str],
 ) -> Plan:
-    _check_shape(dataset)
+    """What all strips of a run over this dataset share; see `solve` for the parameters."""
+    check_shape(dataset)
     cloud = dataset.get("cloud_fraction")
     hours = int(cloud.sizes.get("hour", 1)) if cloud is not None else 1
     varying = tuple(prop for name, (prop, _) in COLUMN_INPUTS.items() if name in dataset)
@@ -126,7 +124,7 @@ def _plan(
 
 def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:
     names = [name for name in USED if name in dataset]
-    arrays = {name: _strips(dataset, name) for name in names}
+    arrays = {name: strips_of(dataset, name) for name in names}
     latitudes = np.asarray(dataset["latitude"].values, float)
     columns = dataset.sizes["longitude"]
     bands = list(layer_bands(plan.layers).values())[-1].stop
@@ -134,7 +132,7 @@ def _solve_lazily(dataset: xr.Dataset, plan: Plan) -> da.Array:
     plan_once = delayed(plan, traverse=False)
     nodes: dict[int, Any] = {}
     pieces, start = [], 0
-    solver = delayed(_solve_block, pure=True)
+    solver = delayed(solve_block, pure=True)
     for index, rows in enumerate(arrays["albedo"].chunks[-2]):
         strip = latitudes[start : start + rows]
         needed = sorted({int(n) for row in strip for n in latitude_stencil(row)[0]})
@@ -164,82 +162,17 @@ def latitude_stencil(latitude: float) -> tuple[NDArray[np.intp], FloatArray]:
     return nodes, np.asarray(weights)
 
 
-def _solve_block(
+def solve_block(
     plan: Plan,
     inputs: Mapping[str, FloatArray],
     latitudes: FloatArray,
     nodes: Mapping[int, Response],
 ) -> FloatArray:
+    """All layers of a strip, from the path integrals at the latitude nodes around its rows."""
     for name, values in inputs.items():
-        _check_range(name, values, latitudes)
+        check_range(name, values, latitudes)
     responses = []
     for latitude in latitudes:
         index, weights = latitude_stencil(float(latitude))
         responses.append(Response.blend([nodes[int(i)] for i in index], weights))
     return solve_strip(plan, inputs, latitudes, responses)
-
-
-def _check_range(name: str, values: FloatArray, latitudes: FloatArray) -> None:
-    if name in ERRORS:
-        return
-    low, high = input_variables()[name].valid
-    finite = np.isfinite(values)
-    if (finite & ((values < low - 1e-6) | (values > high + 1e-6))).any():
-        raise InputDataError(
-            f"{name} holds values outside {low:g} to {high:g} {input_variables()[name].units} "
-            f"between latitudes {latitudes.min():g} and {latitudes.max():g}; "
-            "check its units and fill value."
-        )
-
-
-def _check_shape(dataset: xr.Dataset) -> None:
-    if "albedo" not in dataset:
-        raise InputDataError("The dataset has no variable albedo; add it under that name.")
-    for name in USED:
-        if name not in dataset:
-            continue
-        dims: set[Hashable] = set(dataset[name].dims)
-        wanted = {"latitude", "longitude"} | (set() if name == "elevation" else {"month"})
-        if dims - {"hour"} != wanted or ("hour" in dims and name != "cloud_fraction"):
-            raise InputDataError(
-                f"{name} has dimensions {sorted(map(str, dims))}; {sorted(wanted)} are needed."
-            )
-    if dataset.sizes["month"] != 12:
-        raise InputDataError(f"The dataset has {dataset.sizes['month']} months; 12 are needed.")
-
-
-def _strips(dataset: xr.Dataset, name: str) -> da.Array:
-    """The variable as a float32 dask array in whole-width strips, months first."""
-    order = [d for d in ("month", "hour", "latitude", "longitude") if d in dataset[name].dims]
-    variable = dataset[name].transpose(*order)
-    array = variable.data
-    if not isinstance(array, da.Array):
-        array = da.from_array(np.asarray(array, np.float32), chunks=array.shape)
-    albedo = dataset["albedo"]
-    rows = albedo.chunksizes.get("latitude", (dataset.sizes["latitude"],))
-    whole = dict.fromkeys(range(array.ndim), -1)
-    strips: da.Array = array.astype(np.float32).rechunk({**whole, array.ndim - 2: rows})
-    return strips
-
-
-def _label(stack: da.Array, dataset: xr.Dataset, wanted: tuple[str, ...]) -> xr.Dataset:
-    coordinates = {
-        "month": np.arange(1, 13),
-        "season": [1, 2],
-        "latitude": dataset["latitude"],
-        "longitude": dataset["longitude"],
-    }
-    layers = {}
-    for name in wanted:
-        layer, band = layer_variables()[name], layer_bands(wanted)[name]
-        values = stack[band] if layer.count > 1 else stack[band.start]
-        if layer.is_flags:
-            values = values.astype(np.uint16)
-        attributes = {
-            "standard_name": layer.standard_name,
-            "long_name": layer.long_name,
-            "units": layer.units,
-            "cell_methods": layer.cell_methods,
-        }
-        layers[name] = (layer.dimensions, values, {k: v for k, v in attributes.items() if v})
-    return xr.Dataset(layers, coords=coordinates)
