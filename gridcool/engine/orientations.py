@@ -17,7 +17,6 @@ FloatArray = NDArray[np.floating]
 MERIDIAN_STEP = 2.5
 COMPASS_STEP = 5.0
 COMPASS_RADIUS = 80.0
-COARSE_STEP = 10.0
 FLAT_BELOW = 0.05  # degrees of tilt under which a panel is called flat
 
 
@@ -70,10 +69,9 @@ class Orientations:
 
     @property
     def coarse(self) -> NDArray[np.intp]:
-        """Indices of the candidates about every ten degrees with a complete neighbourhood."""
-        every = round(COARSE_STEP / self.step)
-        kept = [np.round(each / self.step) % every == 0 for each in (self.east, self.north)]
-        return np.flatnonzero(kept[0] & kept[1] & self.interior)
+        """Indices of every second candidate with a complete neighbourhood."""
+        even = [np.round(each / self.step) % 2 == 0 for each in (self.east, self.north)]
+        return np.flatnonzero(even[0] & even[1] & self.interior)
 
     @property
     def interior(self) -> NDArray[np.bool_]:

@@ -1,7 +1,7 @@
 """A panel that is turned twice a year: which months belong together, and how to tilt it in each.
 
-The year is cut into two runs of neighbouring months. All 66 cuts are compared on candidates about
-ten degrees apart; the best cut is then searched and refined on all of them.
+The year is cut into two runs of neighbouring months. All 66 cuts are compared on every second
+candidate orientation; the best cut is then searched and refined on all of them.
 """
 
 from __future__ import annotations

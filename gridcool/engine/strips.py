@@ -22,7 +22,7 @@ Arrays = Mapping[str, FloatArray]
 #: Cells of a row that are worked on together: enough to make Python's own share of the time small,
 #: few enough for the memory of a thread (fewer with an hour axis), and fixed by the run's plan
 #: alone, so that the result does not depend on how the grid is cut into blocks.
-SEGMENT = 2048
+SEGMENT = 8192
 SMALLEST_SEGMENT = 256
 
 
