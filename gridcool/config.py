@@ -163,7 +163,8 @@ def _sentence(error: Any) -> str:
     if error["type"] in ("model_type", "dict_type"):
         return f"{where} is a section with keys of its own: write [{where}] (found {got})."
     if error["type"] == "string_pattern_mismatch":
-        return f'{where}: write a size such as "2 GB" (found {got}).'
+        example = '"threads" or "tcp://host:8786"' if where.endswith("scheduler") else '"2 GB"'
+        return f"{where}: write something like {example} (found {got})."
     if error["type"] == "value_error":
         message = error["msg"].removeprefix("Value error, ")
         return f"{where}: {message}." if where else f"{message}."

@@ -12,8 +12,9 @@ import xarray as xr
 from threadpoolctl import threadpool_limits
 
 from gridcool.config import Settings
-from gridcool.engine.blocks import solve
+from gridcool.engine.blocks import plan_for, solve
 from gridcool.engine.options import Field, InputError, Panel, Sky
+from gridcool.engine.plan import Plan
 from gridcool.errors import SettingsError
 from gridcool.grid import Bounds, Grid
 from gridcool.inputs.load import target_grid
@@ -86,6 +87,11 @@ def screen_dataset(dataset: xr.Dataset, settings: Settings) -> xr.Dataset:
         The sections sky, panel, worth, uncertainty and layers are used.
     """
     return solve(dataset, **engine_options(settings), extra_layers=settings.layers.extra)
+
+
+def plan_of(dataset: xr.Dataset, settings: Settings) -> Plan:
+    """What all strips of the job share."""
+    return plan_for(dataset, **engine_options(settings), extra_layers=settings.layers.extra)
 
 
 def engine_options(settings: Settings) -> dict[str, Any]:

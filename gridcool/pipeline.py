@@ -9,9 +9,13 @@ from pathlib import Path
 from typing import Protocol
 
 import pandas as pd
+import xarray as xr
 
 from gridcool import __version__
+from gridcool.computing import code_digest, run_blocks
 from gridcool.config import Settings
+from gridcool.engine.plan import Plan
+from gridcool.engine.remembered import Done, remembered_blocks, remembered_layers
 from gridcool.grid import Grid
 from gridcool.inputs.load import describe, load_inputs
 from gridcool.inputs.spec import InputReport
@@ -20,7 +24,7 @@ from gridcool.parts import (
     bounds_text,
     computing_threads,
     grid_of,
-    screen_dataset,
+    plan_of,
     specs_of,
     strip_rows,
 )
@@ -30,7 +34,9 @@ from gridcool.planning.regions import Regions, box_regions, coverage, read_regio
 from gridcool.products.layers import write_layers
 from gridcool.products.reading import read_layer
 from gridcool.products.tables import write_region_table
+from gridcool.release.blockstore import BlockStore
 from gridcool.release.publish import (
+    WORK,
     check_output,
     needed_bytes,
     publish,
@@ -40,6 +46,7 @@ from gridcool.release.publish import (
 )
 
 REGION_TABLE = "regions.csv"
+BLOCKS = "blocks"
 REFERENCES = (
     "Bird & Hulstrom 1981 SERI/TR-642-761; Kasten & Czeplak 1980 Solar Energy 24; "
     "Falls 1974 J. Geophys. Res. 79; Hargreaves & Samani 1982 and FAO-56; Spencer 1971; "
@@ -125,11 +132,15 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
         for warning in report.warnings:
             progress.stage(f"warning: {warning}")
     regions = _regions(settings, grid, progress)  # now, so that a bad file costs no computing
-    layers = screen_dataset(loaded.dataset, settings)
-    require_space(output, needed_bytes(grid, [str(name) for name in layers.data_vars]))
+    plan = plan_of(loaded.dataset, settings)
+    require_space(output, needed_bytes(grid, plan.layers))
     now = datetime.now(UTC)
+    store = BlockStore(output / WORK / BLOCKS)
     with staging_folder(output) as stage:
-        progress.stage("Computing and writing the layers")
+        progress.stage("Computing")
+        keys = _blocks(settings, loaded.dataset, plan, store, progress)
+        layers = remembered_layers(keys, loaded.dataset, plan, store)
+        progress.stage("Writing the layers")
         with computing_threads():
             write_layers(
                 layers,
@@ -145,7 +156,24 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
             write_region_table(table, stage / REGION_TABLE)
         progress.stage("Publishing")
         release = publish(stage, output, keep=settings.release.keep, stamp=release_stamp(now))
+        store.keep_only(keys)
     return ScreenResult(release, output / "current", table)
+
+
+def _blocks(
+    settings: Settings,
+    dataset: xr.Dataset,
+    plan: Plan,
+    store: BlockStore,
+    progress: Progress,
+) -> list[str]:
+    """Have every strip of the engine's layers in the store; keys in order."""
+    tasks = remembered_blocks(dataset, plan, store, code_digest())
+    done: list[Done] = run_blocks(tasks, settings.compute.scheduler, progress.advance)
+    fresh = sum(each.computed for each in done)
+    if fresh < len(done):
+        progress.stage(f"{len(done) - fresh} of {len(done)} blocks were known already")
+    return [each.key for each in done]
 
 
 def _regions(settings: Settings, grid: Grid, progress: Progress) -> Regions | None:

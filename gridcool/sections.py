@@ -159,7 +159,7 @@ class Compute(Section):
     """How much memory the run may take and what computes its blocks."""
 
     memory: Annotated[str, Field(pattern=r"^\s*\d+(\.\d+)?\s*[kMGT]i?B\s*$")] = "2 GB"
-    scheduler: Literal["threads"] = "threads"
+    scheduler: Annotated[str, Field(pattern=r"^(threads|(tcp|tls|ucx)://\S+)$")] = "threads"
 
 
 class Release(Section):

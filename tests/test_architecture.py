@@ -29,10 +29,11 @@ MAY_KNOW = {
     "planning": {"engine", "physics", "grid", "errors", "variables"},
     "products": {"grid", "errors", "variables"},
     "release": {"grid", "errors", "variables"},
+    "computing": {"errors", "gridcool"},
     "parts": {"variables", "grid", "errors", "config", "inputs", "engine", "planning"},
     "place": {"grid", "errors", "config", "inputs", "engine", "planning", "parts"},
     "pipeline": {
-        *("physics", "variables", "grid", "errors", "config", "parts"),
+        *("physics", "variables", "grid", "errors", "config", "parts", "computing"),
         *("inputs", "engine", "planning", "products", "release", "gridcool"),
     },
     "cli": {"config", "pipeline", "place", "products", "errors", "gridcool"},

@@ -96,7 +96,7 @@ def test_all_problems_stand_in_one_message() -> None:
         assert place in message
     assert "\n" not in message
     assert "'temperature-range'" in message  # what would be right
-    assert 'such as "2 GB"' in message
+    assert 'like "2 GB"' in message
 
 
 def test_all_problems_between_sections_stand_in_one_message() -> None:

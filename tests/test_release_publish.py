@@ -307,7 +307,7 @@ def test_needed_bytes_are_in_proportion() -> None:
         for layer in layer_variables().values()
     ) * (720 * 1440)
     needed = needed_bytes(grid, layers)
-    assert 3 * raw < needed < 4 * raw + 20e6
+    assert 4 * raw < needed < 5 * raw + 20e6
     finer = Grid(-180.0, 90.0, 0.125, 0.125, 1440, 2880)
     assert needed_bytes(finer, layers) == pytest.approx(4 * needed, rel=0.2)
     assert needed_bytes(grid, ["tilt"]) < needed_bytes(grid, ["monthly_rejected_flux"])

@@ -95,11 +95,11 @@ def explain(
 
 def plan_for(
     dataset: xr.Dataset,
-    panel: Panel | None,
-    sky: Sky | None,
-    field: Field | None,
-    error: InputError | None,
-    extra_layers: Sequence[str],
+    panel: Panel | None = None,
+    sky: Sky | None = None,
+    field: Field | None = None,
+    error: InputError | None = None,
+    extra_layers: Sequence[str] = (),
 ) -> Plan:
     """What all strips of a run over this dataset share; see `solve` for the parameters."""
     check_shape(dataset)

@@ -40,8 +40,8 @@ def release_stamp(moment: datetime) -> str:
 def needed_bytes(grid: Grid, layers: Iterable[str]) -> int:
     """Free space that writing and publishing these layers may take at most, in bytes.
 
-    The cells lie on the disk three times for a while: uncompressed on their way (with their
-    overviews, a third more), as GeoTIFF (overviews included) and in the NetCDF.
+    The cells lie on the disk four times for a while: in the block store, uncompressed on their way
+    (with their overviews, a third more), as GeoTIFF (overviews included) and in the NetCDF.
 
     Parameters
     ----------
@@ -54,6 +54,7 @@ def needed_bytes(grid: Grid, layers: Iterable[str]) -> int:
         layer = layer_variables()[name]
         cells = grid.rows * grid.columns * layer.count * (2 if layer.is_flags else 4)
         total += round(cells * (4 / 3 + 4 / 3 + 1)) + FILE_OVERHEAD
+        total += 4 * grid.rows * grid.columns * layer.count  # blocks hold single precision only
     return total
 
 
