@@ -65,7 +65,7 @@ def _on_cluster(tasks: Sequence[Delayed], address: str, advance: Advance) -> lis
         ) from None
     with client:
         futures = client.compute(list(tasks))
-        for done, _ in enumerate(distributed.as_completed(futures), start=1):
+        for done, _ in enumerate(distributed.as_completed(futures, loop=client.loop), start=1):
             advance(done, len(futures))
         return list(client.gather(futures))
 
