@@ -15,7 +15,7 @@ from functools import cache
 
 import numpy as np
 from numpy.polynomial.chebyshev import chebvander
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 from scipy.linalg import qr
 
 from gridcool.physics import atmosphere, escape
@@ -108,19 +108,22 @@ class ColumnBasis:
         return np.asarray(self.matrix.T.astype(np.float32) @ design.astype(np.float32).T)
 
 
-def default_property(name: str, latitude: float) -> float:
-    """Value of a property of the column where nothing is known, at a latitude in radians."""
+def default_property(name: str, latitude: ArrayLike) -> FloatArray:
+    """Value of a property of the column where nothing is known, at latitudes in radians."""
     if name == "precipitable_water_cm":
-        return float(atmosphere.default_precipitable_water(latitude))
-    return {
-        "pressure_ratio": 1.0,
-        "aerosol_depth_550": atmosphere.DEFAULT_AEROSOL_DEPTH_550,
-        "ozone_cm": atmosphere.DEFAULT_OZONE_CM,
-    }[name]
+        return atmosphere.default_precipitable_water(latitude)
+    return np.full(np.shape(latitude), _DEFAULTS[name])
 
 
-def column_at(latitude: float, properties: Mapping[str, FloatArray]) -> Atmosphere:
-    """A column with the given properties and the defaults of a latitude (radians) for the rest."""
+_DEFAULTS: Mapping[str, float] = {
+    "pressure_ratio": 1.0,
+    "aerosol_depth_550": atmosphere.DEFAULT_AEROSOL_DEPTH_550,
+    "ozone_cm": atmosphere.DEFAULT_OZONE_CM,
+}
+
+
+def column_at(latitude: ArrayLike, properties: Mapping[str, FloatArray]) -> Atmosphere:
+    """Columns with the given properties and the defaults of latitudes (radians) for the rest."""
 
     def known(name: str) -> FloatArray:
         return np.asarray(properties.get(name, default_property(name, latitude)))

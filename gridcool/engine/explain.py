@@ -13,6 +13,7 @@ from gridcool.engine.irradiance import LOW_SUN, borrow_low_sun
 from gridcool.engine.plan import YEAR, Plan, RowTables
 from gridcool.engine.readout import search
 from gridcool.engine.response import Response
+from gridcool.engine.rows import Rows
 from gridcool.engine.state import State, build_state
 
 FloatArray = NDArray[np.floating]
@@ -96,8 +97,9 @@ def explain_cell(
     Explanation, or None where albedo or irradiance is missing
     """
     tables = RowTables.of(response, plan)
-    albedo, _ = borrow_low_sun(inputs["albedo"], response.extraterrestrial < LOW_SUN)
-    state, _ = build_state(plan, inputs, albedo, float(np.deg2rad(latitude)), tables)
+    row = Rows((tables,), np.deg2rad(np.array([latitude])), np.array([1]))
+    albedo, _ = borrow_low_sun(inputs["albedo"], row.extraterrestrial < LOW_SUN)
+    state, _ = build_state(plan, inputs, albedo, row)
     if np.isnan(albedo).any() or np.isnan(state.found.transmission).any():
         return None
     found = search(state)

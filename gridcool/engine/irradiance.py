@@ -56,7 +56,7 @@ def estimate(
     table : SkyTable
     clear : array, shape (12, hours, cells)
         Clear-sky irradiance G₀ of each hour bin, W m-2 as a mean over all hours.
-    extraterrestrial : array, shape (12, 1)
+    extraterrestrial : array, shape (12, cells)
         R_a, W m-2.
     cloud : array, shape (12, hours, cells), or None
     temperature_range : array, shape (12, cells), or None
@@ -145,7 +145,7 @@ def borrow_low_sun(
     ----------
     values : array, shape (12, cells)
         NaN where missing.
-    low_sun : array of bool, shape (12,)
+    low_sun : array of bool, shape (12, cells)
         Months that may be filled; they hardly count in the year.
 
     Returns
@@ -153,7 +153,7 @@ def borrow_low_sun(
     filled : array, shape (12, cells)
     borrowed : array of bool, shape (12, cells)
     """
-    gap = np.isnan(values) & low_sun[:, None]
+    gap = np.isnan(values) & low_sun
     if not gap.any():
         return values, gap
     filled = values.copy()

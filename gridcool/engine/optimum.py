@@ -44,6 +44,12 @@ class Best:
         gamma = np.where(gamma >= 360, 0, gamma)  # what single precision rounds up to a full turn
         return np.where(self.tilt > 0, gamma, np.float32(np.nan))
 
+    def part(self, cells: slice) -> Best:
+        """The same of some of the cells."""
+        return Best(
+            self.east[cells], self.north[cells], self.stencil[:, cells], self.weights[:, cells]
+        )
+
     def value(self, flux: FloatArray) -> FloatArray:
         """What a response of the same cells, shape (cells, orientations), is worth here."""
         around = np.take_along_axis(flux, self.stencil.T, axis=1)

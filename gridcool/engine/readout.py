@@ -59,7 +59,7 @@ class Optimum:
 
 def search(state: State) -> Optimum:
     """Find the best fixed orientation of every cell."""
-    plan, tables = state.plan, state.tables
+    plan = state.plan
     count = state.albedo.shape[1]
     weights = state.clear_sky.weights.transpose(1, 0, 2)  # (months, rank, cells)
     coefficients = beam_coefficients(state.cells, plan.panel)
@@ -67,7 +67,7 @@ def search(state: State) -> Optimum:
     diffuse = diffuse_parts(state.cells, plan.panel)
     flux = _annual(state, beam, diffuse)
     best = find_best(flux, plan.orientations)
-    integrals = best.interpolate(tables.monthly).reshape(12, plan.hours, -1, 5, count)
+    integrals = state.rows.path_integrals(best).reshape(12, plan.hours, -1, 5, count)
     integrals = (integrals * weights[:, None, :, None]).sum(axis=2)
     cosine = np.cos(np.deg2rad(best.tilt))
     result = outcome(state.cells, plan.panel, integrals, diffuse, cosine)
@@ -133,7 +133,11 @@ def _season_layers(state: State, found: Optimum, annual: FloatArray) -> Layers:
     start, length = best_cut(monthly)
     one = _annual(state, found.beam, found.diffuse, season_mask(start, length))
     year = two_seasons(
-        (one, found.flux - one), start, length, orientations, northern=state.latitude >= 0
+        (one, found.flux - one),
+        start,
+        length,
+        orientations,
+        northern=state.rows.spread(state.rows.latitudes) >= 0,
     )
     counts = (found.outcome.reflected * YEAR).sum(axis=0) > 0
     positive = annual > 0
@@ -167,7 +171,7 @@ def _month_layers(state: State, found: Optimum) -> Layers:
 
 def _glare_layers(state: State, found: Optimum) -> Layers:
     """Hours of low rays, and where most of them go."""
-    by_sector = found.best.interpolate(state.tables.response.low_rays)
+    by_sector = state.rows.low_rays(found.best)
     hours = np.maximum(by_sector, 0).sum(axis=0)
     # Of two mirror images across the meridian the eastern one is named.
     main = by_sector.argmax(axis=0) * (360.0 / SECTORS)
@@ -185,24 +189,26 @@ def _annual(
 
     ``months`` is one where a month counts, shape (12, cells); without it all do.
     """
-    tables, count = state.tables, beam.shape[-1]
-    rows = (beam if months is None else beam * months[:, None]).reshape(-1, count)
+    orientations, count = state.plan.orientations, beam.shape[-1]
+    terms = (beam if months is None else beam * months[:, None]).reshape(-1, count)
     weight = state.counts * YEAR
-    return annual_response(
-        rows if tables.sunlit.all() else rows[tables.sunlit],
-        diffuse.annual(weight if months is None else weight * months),
-        tables.annual,
-        state.plan.orientations,
-    )
+    sky = diffuse.annual(weight if months is None else weight * months)
+    flux = np.empty((count, len(orientations.east)), np.float32)
+    for tables, part in state.rows.parts():
+        lit = terms[:, part] if tables.sunlit.all() else terms[tables.sunlit, part]
+        flux[part] = annual_response(lit, sky[:, part], tables.annual, orientations)
+    return flux
 
 
 def _by_month(state: State, found: Optimum, candidates: NDArray[np.intp]) -> FloatArray:
     """Monthly mean flux of some candidates, shape (12, candidates, cells)."""
-    weighted = state.tables.weighted[:, :, candidates] / YEAR[:, None]
-    flux = np.matmul(weighted.transpose(0, 2, 1), found.beam)
+    flux = np.empty((12, len(candidates), found.beam.shape[-1]), np.float32)
+    for tables, part in state.rows.parts():
+        weighted = tables.weighted[:, :, candidates] / YEAR[:, None]
+        flux[:, :, part] = np.matmul(weighted.transpose(0, 2, 1), found.beam[:, :, part])
     cosine = np.cos(np.deg2rad(state.plan.orientations.tilt[candidates])).astype(np.float32)
     for power, escaping in enumerate(found.diffuse.escaping):
         last = power >= len(found.diffuse.forgone)
-        part = escaping if last else escaping - found.diffuse.forgone[power]
-        flux += (part * state.counts)[:, None] * cosine[:, None] ** power
+        sky = escaping if last else escaping - found.diffuse.forgone[power]
+        flux += (sky * state.counts)[:, None] * cosine[:, None] ** power
     return np.asarray(flux)

@@ -86,7 +86,7 @@ def two_seasons(
     length: NDArray[np.intp],
     orientations: Orientations,
     *,
-    northern: bool,
+    northern: NDArray[np.bool_],
 ) -> TwoSeasons:
     """Read off the best orientations of both seasons.
 
@@ -97,13 +97,13 @@ def two_seasons(
     start, length : array of int, shape (cells,)
         From `best_cut`.
     orientations : Orientations
-    northern : bool
-        Whether the cells lie north of the equator, so that low sun stands in the south.
+    northern : array of bool, shape (cells,)
+        Whether a cell lies north of the equator, so that low sun stands in the south.
     """
     found = [find_best(flux, orientations) for flux in fluxes]
     total = sum(best.value(flux) for best, flux in zip(found, fluxes, strict=True))
     begins = (start + 1, (start + length) % 12 + 1)
-    towards_sun = [best.north * (-1 if northern else 1) for best in found]
+    towards_sun = [best.north * np.where(northern, -1, 1) for best in found]
     swap = towards_sun[1] > towards_sun[0]
 
     def ordered(first: FloatArray, second: FloatArray) -> FloatArray:

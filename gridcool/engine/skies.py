@@ -97,19 +97,31 @@ class SkyTable:
         scaled = (transmission - np.float32(self.darkest)) / np.float32(1 - self.darkest)
         return _line(self._inverse, *_position(np.clip(scaled, 0, 1), INVERSE_STEPS))
 
-    def moments(self, cloud: FloatArray, albedo: FloatArray, reflectance: FloatArray) -> Moments:
+    def moments(
+        self,
+        cloud: FloatArray,
+        albedo: FloatArray,
+        reflectance: FloatArray,
+        group: NDArray[np.intp] | None = None,
+    ) -> Moments:
         """Look up all expectations.
 
         Parameters
         ----------
         cloud : array, shape (months, hours, cells)
             N, 0 to 1, without NaN.
-        albedo, reflectance : array, shape (months, 1, cells) or what broadcasts to it
-            α and R_d.
+        albedo : array, shape (months, 1, cells)
+            α.
+        reflectance : array, shape (months or 1, 1, cells), or (groups,)
+            R_d of each cell, or of groups of cells under the same clear sky.
+        group : array of int, shape (cells,), optional
+            The group of each cell.
         """
         column, right = _position(cloud, CLOUD_STEPS)
         row, down = _position(albedo, ALBEDO_STEPS)
         corner = row * (CLOUD_STEPS + 1) + column
+        if group is not None:
+            corner += group * ((ALBEDO_STEPS + 1) * (CLOUD_STEPS + 1))
         bilinear = [
             ((1 - down) * (1 - right), corner),
             ((1 - down) * right, corner + 1),
@@ -120,8 +132,8 @@ class SkyTable:
         whole, beam, beam_out = (_line(table, column, right) for table in self._by_cloud)
         ground = []
         for table in self._by_ground:
-            if reflectance.size == 1:  # one clear sky for all cells: one table for all
-                flat = sum(float(f.flat[0]) * t for f, t in zip(share, table, strict=True))
+            if group is not None:  # a table for each clear sky
+                flat = sum(f[:, None] * t for f, t in zip(share, table, strict=True))
                 values = _gather(np.asarray(flat, np.float32), bilinear)
             else:
                 values = np.asarray(

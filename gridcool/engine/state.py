@@ -19,7 +19,8 @@ from gridcool.engine.irradiance import (
     spread_over_hours,
 )
 from gridcool.engine.options import Sky
-from gridcool.engine.plan import Plan, RowTables
+from gridcool.engine.plan import Plan
+from gridcool.engine.rows import Rows
 from gridcool.engine.skies import sky_table
 
 FloatArray = NDArray[np.floating]
@@ -27,18 +28,16 @@ FloatArray = NDArray[np.floating]
 
 @dataclass(frozen=True, eq=False)
 class State:
-    """Cells of one row.
+    """Cells of neighbouring rows.
 
     Attributes
     ----------
     plan : Plan
-    tables : RowTables
+    rows : Rows
     clear_sky : ClearSky
     found : Estimate
         Irradiance over its clear-sky value.
     albedo : array, shape (12, cells)
-    latitude : float
-        Radians.
     albedo_error : array, shape (12, cells), or None
         Standard error of the monthly albedo from the spread of years.
     transmissions : tuple of array, shape (12, cells)
@@ -47,11 +46,10 @@ class State:
     """
 
     plan: Plan
-    tables: RowTables
+    rows: Rows
     clear_sky: ClearSky
     found: Estimate
     albedo: FloatArray
-    latitude: float
     albedo_error: FloatArray | None = None
     transmissions: tuple[FloatArray, ...] = ()
 
@@ -90,9 +88,11 @@ class State:
         clear = self.clear_over(albedo)
         known = replace(self.found, transmission=transmission)
         by_hour = spread_over_hours(known, table.darkest, clear)
-        moments = table.moments(
-            table.equivalent_cloud(by_hour), albedo[:, None], self.clear_sky.returned[:, None]
-        )
+        cloud, by_row = table.equivalent_cloud(by_hour), self.clear_sky.row_returned
+        if by_row is None:
+            moments = table.moments(cloud, albedo[:, None], self.clear_sky.returned[:, None])
+        else:
+            moments = table.moments(cloud, albedo[:, None], by_row, self.rows.index)
         return Cells(
             albedo=albedo,
             escape=self.clear_sky.escape,
@@ -108,10 +108,9 @@ def build_state(
     plan: Plan,
     inputs: Mapping[str, FloatArray],
     albedo: FloatArray,
-    latitude: float,
-    tables: RowTables,
+    rows: Rows,
 ) -> tuple[State, NDArray[np.bool_]]:
-    """Bring together what the inputs say of a row of cells.
+    """Bring together what the inputs say of the cells of some rows.
 
     Parameters
     ----------
@@ -119,9 +118,7 @@ def build_state(
     inputs : mapping of array, shape (12, cells), (12, hours, cells) or (cells,)
     albedo : array, shape (12, cells)
         Without gaps.
-    latitude : float
-        Radians.
-    tables : RowTables
+    rows : Rows
 
     Returns
     -------
@@ -129,13 +126,13 @@ def build_state(
     borrowed : array of bool, shape (cells,)
         Where a month of low sun took its neighbours' irradiance.
     """
-    response, count = tables.response, albedo.shape[1]
+    count = albedo.shape[1]
     column = {name: inputs[name] for name in COLUMN_INPUTS if name in inputs}
     nothing = np.zeros((12, count), np.float32)
     empty = Estimate(nothing, nothing.astype(np.uint16), None)
-    clear_sky = clear_sky_of(plan.basis, column, latitude, response)
-    state = State(plan, tables, clear_sky, empty, albedo, latitude)
-    low_sun = response.extraterrestrial < LOW_SUN
+    clear_sky = clear_sky_of(plan.basis, column, rows)
+    state = State(plan, rows, clear_sky, empty, albedo)
+    low_sun = rows.extraterrestrial < LOW_SUN
     found = _estimated(state, inputs)
     filled, borrowed = borrow_low_sun(found.transmission, low_sun)
     moved = tuple(
@@ -158,7 +155,7 @@ def _estimated(state: State, inputs: Mapping[str, FloatArray]) -> Estimate:
         plan.sky,
         sky_table(plan.sky),
         clear=state.clear,
-        extraterrestrial=state.tables.response.extraterrestrial[:, None],
+        extraterrestrial=state.rows.extraterrestrial,
         cloud=None if cloud is None else cloud.reshape(12, -1, state.albedo.shape[1]),
         temperature_range=inputs.get("temperature_range"),
         measured=inputs.get("surface_shortwave"),

@@ -12,6 +12,7 @@ from gridcool.engine.irradiance import LOW_SUN, NO_SUN, borrow_low_sun
 from gridcool.engine.plan import YEAR, Plan, RowTables
 from gridcool.engine.readout import read_out
 from gridcool.engine.response import Response
+from gridcool.engine.rows import Rows
 from gridcool.engine.skies import sky_table
 from gridcool.engine.state import build_state
 from gridcool.variables import flag_value, layer_variables
@@ -19,9 +20,9 @@ from gridcool.variables import flag_value, layer_variables
 FloatArray = NDArray[np.floating]
 Arrays = Mapping[str, FloatArray]
 
-#: Cells of a row that are worked on together: enough to make Python's own share of the time small,
-#: few enough for the memory of a thread (fewer with an hour axis), and fixed by the run's plan
-#: alone, so that the result does not depend on how the grid is cut into blocks.
+#: Cells that are worked on together, of one row or several: enough to make Python's own share of
+#: the time small, few enough for the memory of a thread (fewer with an hour axis). Where a row is
+#: cut depends on the run's plan alone, so that the result does not depend on the grid's blocks.
 SEGMENT = 8192
 SMALLEST_SEGMENT = 256
 
@@ -61,42 +62,49 @@ def solve_strip(
     rows, columns = inputs["albedo"].shape[-2:]
     stack = np.empty((list(layer_bands(plan.layers).values())[-1].stop, rows, columns), np.float32)
     segment = max(SMALLEST_SEGMENT, SEGMENT // plan.hours)
-    for row in range(rows):
-        tables = RowTables.of(responses[row], plan)
-        latitude = float(np.deg2rad(latitudes[row]))
+    together = max(1, segment // columns)
+    for top in range(0, rows, together):
+        band = slice(top, min(top + together, rows))
+        tables = tuple(RowTables.of(each, plan) for each in responses[band])
+        radians = np.deg2rad(latitudes[band])
         for start in range(0, columns, segment):
             part = slice(start, min(start + segment, columns))
-            cells = {name: values[..., row, part] for name, values in inputs.items()}
-            _solve_segment(plan, cells, latitude, tables, stack[:, row, part])
+            cells = {name: _flat(values[..., band, part]) for name, values in inputs.items()}
+            counts = np.full(len(tables), part.stop - part.start)
+            found = _solve_segment(plan, cells, Rows(tables, radians, counts))
+            stack[:, band, part] = found.reshape(len(stack), len(tables), -1)
     return stack
 
 
-def _solve_segment(
-    plan: Plan, inputs: Arrays, latitude: float, tables: RowTables, out: FloatArray
-) -> None:
-    """Fill ``out``, shape (bands, cells), for a piece of a row."""
-    response = tables.response
-    albedo, albedo_borrowed = borrow_low_sun(inputs["albedo"], response.extraterrestrial < LOW_SUN)
-    out[:] = np.nan
-    known = ~np.isnan(albedo).any(axis=0)
-    quality = np.where(known, 0, flag_value("input_quality", "albedo_missing")).astype(np.uint16)
+def _flat(values: FloatArray) -> FloatArray:
+    """Rows and columns as one axis of cells."""
+    return values.reshape(*values.shape[:-2], -1)
+
+
+def _solve_segment(plan: Plan, inputs: Arrays, rows: Rows) -> FloatArray:
+    """All bands of the cells of some rows, shape (bands, cells)."""
+    albedo, albedo_borrowed = borrow_low_sun(inputs["albedo"], rows.extraterrestrial < LOW_SUN)
     bands = layer_bands(plan.layers)
+    out = np.full((list(bands.values())[-1].stop, albedo.shape[-1]), np.nan, np.float32)
+    known = np.asarray(~np.isnan(albedo).any(axis=0))
+    quality = np.where(known, 0, flag_value("input_quality", "albedo_missing")).astype(np.uint16)
     if known.any():
         chosen = {name: values[..., known] for name, values in inputs.items()}
-        layers, flags = _solve_cells(plan, chosen, albedo[:, known], latitude, tables)
+        layers, flags = _solve_cells(plan, chosen, albedo[:, known], rows.only(known))
         for name, values in layers.items():
             if name in bands:
                 out[bands[name], known] = values
         borrowed = flag_value("input_quality", "low_sun_month_filled")
         quality[known] |= flags | _bit(albedo_borrowed[:, known].any(axis=0), borrowed)
     out[bands["input_quality"]] = quality
+    return out
 
 
 def _solve_cells(
-    plan: Plan, inputs: Arrays, albedo: FloatArray, latitude: float, tables: RowTables
+    plan: Plan, inputs: Arrays, albedo: FloatArray, rows: Rows
 ) -> tuple[dict[str, FloatArray], NDArray[np.uint16]]:
     """Layers and quality flags of cells whose albedo is known all year."""
-    state, borrowed = build_state(plan, inputs, albedo, latitude, tables)
+    state, borrowed = build_state(plan, inputs, albedo, rows)
     transmission = state.found.transmission
     layers = read_out(state, inputs.get("temperature_range"))
     layers["equivalent_cloud_fraction"] = _mean_cloud(plan, transmission, state.clear)
