@@ -9,10 +9,11 @@ from pathlib import Path
 import xarray as xr
 
 from gridcool.errors import InputDataError
+from gridcool.inputs.classic import CLASSIC_MARKS, refuse_truncated
 from gridcool.inputs.geotiff import open_geotiff
 
 TIFF_MARKS = (b"II*\x00", b"MM\x00*", b"II+\x00", b"MM\x00+")
-NETCDF_MARKS = (b"CDF\x01", b"CDF\x02", b"CDF\x05", b"\x89HDF\r\n\x1a\n")
+NETCDF_MARKS = (*CLASSIC_MARKS, b"\x89HDF\r\n\x1a\n")
 
 
 @dataclass(frozen=True)
@@ -45,6 +46,8 @@ def open_file(path: Path, variable: str | None = None) -> Opened:
         dataset, warnings = open_geotiff(path, variable)
         return Opened(dataset, "GeoTIFF", warnings)
     if start.startswith(NETCDF_MARKS):
+        if start.startswith(CLASSIC_MARKS):
+            refuse_truncated(path)
         return Opened(_open_netcdf(path), "NetCDF")
     raise InputDataError(
         f"the file is {_what_it_is(start)}, not NetCDF, GeoTIFF or Zarr; "
