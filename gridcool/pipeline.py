@@ -16,7 +16,6 @@ from gridcool.computing import code_digest, run_blocks
 from gridcool.config import Settings
 from gridcool.engine.plan import Plan
 from gridcool.engine.remembered import Done, remembered_blocks, remembered_layers
-from gridcool.grid import Grid
 from gridcool.inputs.load import describe, load_inputs
 from gridcool.inputs.spec import InputReport
 from gridcool.parts import (
@@ -25,14 +24,13 @@ from gridcool.parts import (
     computing_threads,
     grid_of,
     plan_of,
+    screen_dataset,
     specs_of,
     strip_rows,
 )
-from gridcool.planning.ranking import LAYERS as RANKED_LAYERS
-from gridcool.planning.ranking import region_table
-from gridcool.planning.regions import Regions, box_regions, coverage, read_regions
+from gridcool.planned import decide, declarations, planning_layers, regions_of
 from gridcool.products.layers import write_layers
-from gridcool.products.reading import read_layer
+from gridcool.products.reading import layer_reader
 from gridcool.products.tables import write_region_table
 from gridcool.release.blockstore import BlockStore
 from gridcool.release.publish import (
@@ -131,15 +129,22 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
     for report in loaded.reports:
         for warning in report.warnings:
             progress.stage(f"warning: {warning}")
-    regions = _regions(settings, grid, progress)  # now, so that a bad file costs no computing
+    regions = regions_of(settings, grid)  # now, so that a bad file costs no computing
+    for note in () if regions is None else regions.notes:
+        progress.stage(f"warning: {note}")
     plan = plan_of(loaded.dataset, settings)
-    require_space(output, needed_bytes(grid, plan.layers))
+    declared = declarations(settings)
+    planning_layers(  # names of layers are checked before anything is computed
+        screen_dataset(loaded.dataset, settings), loaded.dataset, settings
+    )
+    require_space(output, needed_bytes(grid, [*plan.layers, *declared]))
     now = datetime.now(UTC)
     store = BlockStore(output / WORK / BLOCKS)
     with staging_folder(output) as stage:
         progress.stage("Computing")
         keys = _blocks(settings, loaded.dataset, plan, store, progress)
         layers = remembered_layers(keys, loaded.dataset, plan, store)
+        layers = layers.merge(planning_layers(layers, loaded.dataset, settings))
         progress.stage("Writing the layers")
         with computing_threads():
             write_layers(
@@ -147,17 +152,17 @@ def screen(settings: Settings, progress: Progress) -> ScreenResult:
                 grid,
                 stage,
                 attributes=_attributes(settings, loaded.reports, now),
+                declared=declared,
                 on_progress=lambda _what, done, total: progress.advance(done, total),
             )
-        table = None
-        if regions is not None:
-            progress.stage("Ranking the regions")
-            table = _ranked(settings, grid, regions, stage)
-            write_region_table(table, stage / REGION_TABLE)
+        progress.stage("Ranking the regions")
+        found = decide(settings, grid, regions, layer_reader(stage), loaded.dataset)
+        if found.table is not None:
+            write_region_table(found.table, stage / REGION_TABLE)
         progress.stage("Publishing")
         release = publish(stage, output, keep=settings.release.keep, stamp=release_stamp(now))
         store.keep_only(keys)
-    return ScreenResult(release, output / "current", table)
+    return ScreenResult(release, output / "current", found.table)
 
 
 def _blocks(
@@ -174,25 +179,6 @@ def _blocks(
     if fresh < len(done):
         progress.stage(f"{len(done) - fresh} of {len(done)} blocks were known already")
     return [each.key for each in done]
-
-
-def _regions(settings: Settings, grid: Grid, progress: Progress) -> Regions | None:
-    """The regions that the settings ask for, if any."""
-    wanted = settings.regions
-    if wanted is None:
-        return None
-    if wanted.path is None:
-        return box_regions(grid.bounds, wanted.boxes or 0.0)
-    regions = read_regions(settings.resolve(wanted.path), wanted.name)
-    for note in regions.notes:
-        progress.stage(f"warning: {note}")
-    return regions
-
-
-def _ranked(settings: Settings, grid: Grid, regions: Regions, product: Path) -> pd.DataFrame:
-    """The region table from the layers just written."""
-    layers = {name: read_layer(product, name) for name in RANKED_LAYERS}
-    return region_table(layers, coverage(regions, grid), ground_cover=settings.panel.ground_cover)
 
 
 def _attributes(

@@ -12,6 +12,7 @@ from typing import Any, Literal
 
 #: How many bands a layer has.
 BANDS = {"year": 1, "month": 12, "season": 2}
+FLAG_KEYS = ("flags", "classes")
 
 
 @dataclass(frozen=True)
@@ -45,7 +46,11 @@ class InputVariable:
 
 @dataclass(frozen=True)
 class LayerVariable:
-    """What is declared of one output layer."""
+    """What is declared of one output layer.
+
+    ``flags`` are bits that may stand together, ``classes`` values of which each cell has one.
+    Layers made by planning depend on the settings, which also name their flags and classes.
+    """
 
     name: str
     standard_name: str
@@ -57,6 +62,8 @@ class LayerVariable:
     flags: tuple[Flag, ...] = ()
     on_request: bool = False
     caution: str = ""
+    classes: tuple[Flag, ...] = ()
+    made_by: Literal["engine", "planning"] = "engine"
 
     @property
     def count(self) -> int:
@@ -72,6 +79,11 @@ class LayerVariable:
     def is_flags(self) -> bool:
         """Whether the layer holds bits instead of a quantity."""
         return bool(self.flags)
+
+    @property
+    def is_whole(self) -> bool:
+        """Whether the layer holds whole numbers, bits or classes, instead of a quantity."""
+        return bool(self.flags or self.classes)
 
 
 @cache
@@ -95,9 +107,14 @@ def layer_variables() -> Mapping[str, LayerVariable]:
     """Every layer that gridcool writes, in the order of the table."""
     known = {}
     for name, row in _table()["layers"].items():
-        flags = tuple(Flag(*flag) for flag in row.get("flags", ()))
-        known[name] = LayerVariable(name=name, **{**row, "flags": flags})
+        named = {key: tuple(Flag(*each) for each in row.get(key, ())) for key in FLAG_KEYS}
+        known[name] = LayerVariable(name=name, **{**row, **named})
     return MappingProxyType(known)
+
+
+def engine_layers() -> list[str]:
+    """Names of the layers that the engine makes, in the order of the table."""
+    return [name for name, layer in layer_variables().items() if layer.made_by == "engine"]
 
 
 def flag_value(layer: str, meaning: str) -> int:

@@ -54,6 +54,8 @@ def invented_values(grid: Grid, name: str) -> np.ndarray:
         chosen = rng.integers(0, 1024, size=grid.shape).astype(np.uint16)
         chosen[: grid.rows // 2] = 4
         return chosen
+    if layer.classes:
+        return rng.integers(0, 4, size=grid.shape).astype(np.uint8)
     if name == "azimuth":
         # North, from either side: a mean of such angles would look south.
         values = np.where(rng.random(grid.shape) < 0.5, 1.0, 359.0) + rng.random(grid.shape)

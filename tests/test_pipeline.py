@@ -17,7 +17,7 @@ from gridcool.config import load_settings
 from gridcool.engine.blocks import solve
 from gridcool.engine.options import Panel, Sky
 from gridcool.planning.ranking import COLUMNS
-from gridcool.variables import layer_variables
+from gridcool.variables import engine_layers, layer_variables
 
 SETTINGS = """
 [job]
@@ -67,7 +67,8 @@ def test_a_release_holds_every_layer_and_the_table(
     shown = capsys.readouterr()
     current = project.parent / "out" / "current"
     assert str(current) in shown.out
-    usual = [name for name, layer in layer_variables().items() if not layer.on_request]
+    usual = [name for name in engine_layers() if not layer_variables()[name].on_request]
+    usual.append("exclusion")
     assert sorted(p.stem for p in (current / "layers").iterdir()) == sorted(usual)
     table = pd.read_csv(current / "regions.csv")
     assert tuple(table.columns) == COLUMNS

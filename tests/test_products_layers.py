@@ -84,7 +84,12 @@ def test_geotiffs_say_what_they_hold(written: Written) -> None:
             if layer.is_flags:
                 assert set(file.dtypes) == {"uint16"}
                 assert file.nodata is None
-                assert tags["flag_64"].startswith("albedo_missing: ")
+                first = layer.flags[0]
+                assert tags[f"flag_{first.value}"].startswith(f"{first.meaning}: ")
+            elif layer.classes:
+                assert set(file.dtypes) == {"uint8"}
+                assert file.nodata is None
+                assert tags["class_0"].startswith("none: ")
             else:
                 assert set(file.dtypes) == {"float32"}
                 assert math.isnan(file.nodata)
@@ -193,7 +198,7 @@ def test_overviews_stay_within_the_data(region: Written) -> None:
         known = small[~np.isnan(small)]
         assert np.nanmin(values) <= known.min()
         assert known.max() <= np.nanmax(values)
-        if layer.is_flags or layer.ramp in ("compass", "month"):
+        if layer.is_whole or layer.ramp in ("compass", "month"):
             assert set(known.tolist()) <= set(values[~np.isnan(values)].tolist())
         else:
             # Averaged, not picked: a mean scatters less than its cells.

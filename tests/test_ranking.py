@@ -3,22 +3,36 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from gridcool.grid import Grid
+from gridcool.planning.confidence import ErrorModel
+from gridcool.planning.exclusions import ExclusionRule, exclusion_flags
+from gridcool.planning.losses import exclusion_losses
 from gridcool.planning.ranking import COLUMNS, mean_orientation, region_table, weighted_percentile
 from gridcool.planning.regions import Cover
+from gridcool.planning.worth import PanelCosts
 
 NAN = math.nan
-LAYERS = {
+GRID = Grid(0.0, 30.0, 10.0, 10.0, 3, 3)
+LAYERS: dict[str, np.ndarray] = {
     "rejected_flux": np.array([[100, 120, NAN], [80, 90, 110], [60, 70, 50]], np.float32),
+    "flux_uncertainty": np.array([[4, 8, NAN], [6, 6, 6], [6, 6, 6]], np.float32),
     "tilt": np.array([[30, 30, NAN], [20, 20, 10], [0, 40, 5]], np.float32),
     "azimuth": np.array([[180, 180, NAN], [180, 0, 90], [NAN, 90, 0]], np.float32),
+    "low_ray_hours": np.array([[100, 300, NAN], [50, 50, 0], [0, 0, 0]], np.float32),
+    "co2e_standing": np.array([[100, 120, NAN], [80, 100, 0], [0, 0, 0]], np.float32),
+    "co2e_100yr": np.array([[2, 3, NAN], [1, 2, 0], [0, 0, 0]], np.float32),
 }
+COSTS = PanelCosts(lifetime_years=25, mass=10, embodied_energy=150, cost_low=14, cost_high=100)
 KM2 = 1e6
 
 
@@ -36,8 +50,13 @@ MIDDLE = cover("middle", (3, 2.0), (4, 2.0))
 VOID = cover("void", (2, 2.0))
 
 
+def table(covers: Sequence[Cover], layers: dict[str, np.ndarray] = LAYERS, **options: Any) -> Any:
+    given = {"ground_cover": 0.5, "costs": COSTS, **options}
+    return region_table(layers.get, covers, GRID, **given)
+
+
 def test_every_column_by_hand() -> None:
-    frame = region_table(LAYERS, [MIDDLE, NORTH], ground_cover=0.5)
+    frame = table([MIDDLE, NORTH], error=ErrorModel(common_share=1.0))
     assert tuple(frame.columns) == COLUMNS
     assert frame["region"].tolist() == ["north", "middle"]
     north, middle = frame.to_dict("records")
@@ -52,75 +71,131 @@ def test_every_column_by_hand() -> None:
         "rejected_flux_p10": pytest.approx(100.0),  # 0.4 of 4: before the first
         "rejected_flux_p50": pytest.approx(115.0),  # 2.0 of 4: three quarters of the way
         "rejected_flux_p90": pytest.approx(120.0),  # 3.6 of 4: after the last
+        "flux_uncertainty": pytest.approx((4 * 1 + 8 * 3) / 4),  # all of it common: it adds up
+        "rank_low": 1,
+        "rank_high": 1,
+        "chance_top": 1.0,
         "tilt": pytest.approx(30.0),
         "azimuth": pytest.approx(180.0),
+        "suitability_mean": pytest.approx(NAN, nan_ok=True),
         "panel_km2": pytest.approx(2.0),
         "rejected_power_tw": pytest.approx(115.0 * 2e6 / 1e12),
+        "co2e_standing_mt": pytest.approx(115 * 2e6 / 1e9),
+        "co2e_100yr_mt_per_year": pytest.approx(2.75 * 2e6 / 1e9),
+        "panel_mass_mt": pytest.approx(10 * 2e6 / 1e9),
+        "energy_payback_days": pytest.approx(150e6 / 115 / 86400),
+        "cost_per_tonne_low": pytest.approx(14 / (2.75 * 25 / 1000)),
+        "cost_per_tonne_high": pytest.approx(100 / (2.75 * 25 / 1000)),
+        "low_ray_hours": pytest.approx(250.0),
+        "main_exclusion": "",
     }
-    assert middle == {
-        "rank": 2,
-        "region": "middle",
-        "area_km2": pytest.approx(4.0),
-        "eligible_km2": pytest.approx(4.0),
-        "eligible_share": pytest.approx(1.0),
-        "rejected_flux_mean": pytest.approx(85.0),
-        "rejected_flux_p10": pytest.approx(80.0),
-        "rejected_flux_p50": pytest.approx(85.0),
-        "rejected_flux_p90": pytest.approx(90.0),
-        "tilt": pytest.approx(0.0, abs=1e-6),  # north and south cancel
-        "azimuth": pytest.approx(NAN, nan_ok=True),
-        "panel_km2": pytest.approx(2.0),
-        "rejected_power_tw": pytest.approx(85.0 * 2e6 / 1e12),
-    }
+    assert middle["rank"] == 2
+    assert middle["rejected_flux_mean"] == pytest.approx(85.0)
+    assert [middle[f"rejected_flux_p{p}"] for p in (10, 50, 90)] == pytest.approx([80, 85, 90])
+    assert middle["tilt"] == pytest.approx(0.0, abs=1e-6)  # north and south cancel
+    assert math.isnan(middle["azimuth"])
+    assert middle["eligible_share"] == pytest.approx(1.0)
 
 
-def test_only_eligible_cells_count() -> None:
-    eligible = np.ones((3, 3), bool)
-    eligible[0, 1] = False
-    frame = region_table(LAYERS, [NORTH, MIDDLE], ground_cover=0.3, eligible=eligible)
-    north = frame.set_index("region").loc["north"]
-    assert north["rank"] == 1
-    assert north["eligible_km2"] == pytest.approx(1.0)
-    assert north["eligible_share"] == pytest.approx(1 / 8)
-    assert north["rejected_flux_mean"] == pytest.approx(100.0)
-    assert north["rejected_flux_p90"] == pytest.approx(100.0)
-    assert north["panel_km2"] == pytest.approx(0.3)
+RULES = [
+    ExclusionRule("slope", "too steep", above=1),
+    ExclusionRule("cover", "water", equals=(1,)),
+]
+FLAGS = exclusion_flags(RULES)
+
+
+def test_exclusions_and_why() -> None:
+    exclusion = np.array([[0, 2, 1], [2, 6, 0], [0, 0, 0]], np.uint16)
+    layers = {**LAYERS, "exclusion": exclusion}
+    frame = table([NORTH, MIDDLE, VOID], layers, flags=FLAGS).set_index("region")
+    assert frame.loc["north", "eligible_km2"] == pytest.approx(1.0)
+    assert frame.loc["north", "rejected_flux_mean"] == pytest.approx(100.0)
+    assert frame.loc["north", "main_exclusion"] == "too steep"  # 3 km2, no result 2
+    assert frame.loc["middle", "main_exclusion"] == "too steep"
+    assert frame.loc["void", "main_exclusion"] == "nothing is known of the flux here"
+    assert frame["rank"].fillna(-1).tolist() == [1, -1, -1]
+    losses = exclusion_losses(exclusion, [NORTH, MIDDLE], FLAGS).to_dict("records")
+    assert losses == [
+        {
+            "region": "north",
+            "reason": "nothing is known of the flux here",
+            "area_km2": 2.0,
+            "only_km2": 2.0,
+        },
+        {"region": "north", "reason": "too steep", "area_km2": 3.0, "only_km2": 3.0},
+        {"region": "middle", "reason": "too steep", "area_km2": 4.0, "only_km2": 2.0},
+        {"region": "middle", "reason": "water", "area_km2": 2.0, "only_km2": 0.0},
+    ]
     # What has no result stays out, whatever the mask says.
-    everything = region_table(LAYERS, [NORTH], ground_cover=0.3, eligible=np.ones((3, 3), bool))
-    assert everything["eligible_km2"].tolist() == pytest.approx([4.0])
+    free = {**LAYERS, "exclusion": np.zeros((3, 3), np.uint16)}
+    assert table([NORTH], free)["eligible_km2"].tolist() == pytest.approx([4.0])
+
+
+def test_ranked_by_suitability() -> None:
+    layers = {
+        **LAYERS,
+        "suitability": np.array([[0.2, 0.2, NAN], [0.9, 0.7, 0], [0, 0, 0]], np.float32),
+        "suitability_uncertainty": np.full((3, 3), 0.01, np.float32),
+    }
+    frame = table([NORTH, MIDDLE], layers, by="suitability", top=1)
+    assert frame["region"].tolist() == ["middle", "north"]
+    assert frame["suitability_mean"].tolist() == pytest.approx([0.8, 0.2])
+    assert frame["chance_top"].tolist() == [1.0, 0.0]
+    assert (frame["flux_uncertainty"] > 3).all()  # still that of the flux, in W m-2
+    # Large errors make the order open.
+    layers["suitability_uncertainty"] = np.full((3, 3), 5.0, np.float32)
+    open_ = table([NORTH, MIDDLE], layers, by="suitability", top=1)
+    assert open_["rank_low"].tolist() == [1, 1]
+    assert open_["rank_high"].tolist() == [2, 2]
+    assert open_["chance_top"].sum() == pytest.approx(1.0)
+
+
+def test_layers_are_read_once_or_twice_and_never_together() -> None:
+    asked: list[str] = []
+
+    def read(name: str) -> np.ndarray | None:
+        asked.append(name)
+        return LAYERS.get(name)
+
+    region_table(read, [NORTH, MIDDLE], GRID, ground_cover=0.3, costs=COSTS)
+    assert asked.count("rejected_flux") == 1
+    assert max(asked.count(name) for name in asked) == 1
 
 
 def test_nothing_eligible_comes_last_without_a_rank() -> None:
     away = Cover("away", 5 * KM2, np.zeros(0, np.int64), np.zeros(0))
     nowhere = Cover("nowhere", 0.0, np.zeros(0, np.int64), np.zeros(0))
-    frame = region_table(LAYERS, [VOID, nowhere, MIDDLE, away, NORTH], ground_cover=0.3)
+    frame = table([VOID, nowhere, MIDDLE, away, NORTH])
     assert frame["region"].tolist() == ["north", "middle", "away", "nowhere", "void"]
     assert frame["rank"].fillna(-1).tolist() == [1, 2, -1, -1, -1]
+    assert frame["main_exclusion"].tolist() == ["", "", "no data", "no data", "no data"]
     last = frame.set_index("region").loc["void"]
     assert last["area_km2"] == pytest.approx(2.0)
     assert last["eligible_km2"] == last["eligible_share"] == 0
-    assert last[["rejected_flux_mean", "tilt", "panel_km2"]].isna().all()
+    assert last[["rejected_flux_mean", "tilt", "panel_km2", "chance_top"]].isna().all()
     assert frame["eligible_share"].notna().all()
 
 
 def test_a_table_without_any_eligible_cell_stays_numeric() -> None:
-    frame = region_table(LAYERS, [VOID], ground_cover=0.3)
+    frame = table([VOID])
     assert frame["rank"].isna().all()
-    assert frame["rejected_flux_mean"].dtype == float
-    assert frame["tilt"].dtype == float
+    for column in ("rejected_flux_mean", "tilt", "energy_payback_days", "cost_per_tonne_low"):
+        assert frame[column].dtype == float
+    assert isinstance(frame["rank"].dtype, pd.Int64Dtype)
+    assert table([])["rank"].tolist() == []
 
 
 def test_ties_are_in_order_of_name_whatever_the_order_given() -> None:
     names = ["delta", "alpha", "charlie", "bravo"]
     covers = [replace(MIDDLE, name=name) for name in names]
-    frame = region_table(LAYERS, [*covers, NORTH], ground_cover=0.3)
+    frame = table([*covers, NORTH])
     assert frame["region"].tolist() == ["north", *sorted(names)]
     assert frame["rank"].tolist() == [1, 2, 3, 4, 5]
 
 
 def test_layers_are_not_touched() -> None:
     before = {name: values.copy() for name, values in LAYERS.items()}
-    region_table(LAYERS, [NORTH], ground_cover=0.3, eligible=np.zeros((3, 3), bool))
+    table([NORTH, MIDDLE])
     for name, values in before.items():
         np.testing.assert_array_equal(LAYERS[name], values)
 

@@ -13,12 +13,12 @@ from drawn_regions import GEOD, GLOBE, Ring, geodesic_area, geojson, only, store
 from shapely import MultiPolygon, Polygon, box
 
 from gridcool.grid import Bounds, Grid, grid_from_bounds
+from gridcool.planning.region_files import read_regions
 from gridcool.planning.regions import (
     Regions,
     box_regions,
     coverage,
     ellipsoid_area,
-    read_regions,
 )
 
 DISTRICTS = Path(__file__).parents[1] / "data_demo" / "districts.geojson"

@@ -2,21 +2,25 @@
 
 from __future__ import annotations
 
+import json
 import math
 from pathlib import Path
 from typing import Any
 
 import geopandas as gpd
+import numpy as np
 import pytest
+import rasterio
+import shapely
 from drawn_regions import GLOBE, geojson, only, stored
 from shapely import Point, Polygon, box
 
 from gridcool.errors import InputDataError, SettingsError
 from gridcool.grid import grid_from_bounds
+from gridcool.planning.region_files import read_regions
 from gridcool.planning.regions import (
     Regions,
     coverage,
-    read_regions,
 )
 
 BOX = [(10.0, 20.0), (15.0, 20.0), (15.0, 26.0), (10.0, 26.0)]
@@ -165,3 +169,117 @@ def test_the_first_layer_with_polygons_is_used_and_named(tmp_path: Path) -> None
     regions = read_regions(path, None)
     assert regions.names == ("old",)
     assert regions.notes == ("r.gpkg has several layers of polygons; old is used.",)
+
+
+# --- other kinds of file ---
+
+
+def boxes() -> Any:
+    """Two named boxes."""
+    return gpd.GeoDataFrame(
+        {"name": ["west", "east"]},
+        geometry=[shapely.box(0, 0, 10, 10), shapely.box(10, 0, 20, 5)],
+        crs="EPSG:4326",
+    )
+
+
+@pytest.mark.parametrize("kind", ["gpkg", "shp", "geojson", "fgb", "parquet"])
+def test_kinds_of_polygon_files(tmp_path: Path, kind: str) -> None:
+    path = tmp_path / f"boxes.{kind}"
+    if kind == "parquet":
+        boxes().to_parquet(path)
+    else:
+        boxes().to_file(path)
+    regions = read_regions(path, "name")
+    assert dict(zip(regions.names, [g.area for g in regions.geometries], strict=True)) == {
+        "west": pytest.approx(100),
+        "east": pytest.approx(50),
+    }
+
+
+def test_topojson(tmp_path: Path) -> None:
+    """Two squares that share an edge: arcs are kept once."""
+    path = tmp_path / "boxes.topojson"
+    topology = {
+        "type": "Topology",
+        "arcs": [
+            [[10, 0], [10, 10]],
+            [[10, 10], [0, 10], [0, 0], [10, 0]],
+            [[10, 10], [20, 10], [20, 0], [10, 0]],
+        ],
+        "objects": {
+            "boxes": {
+                "type": "GeometryCollection",
+                "geometries": [
+                    {"type": "Polygon", "arcs": [[0, 1]], "properties": {"name": "west"}},
+                    {"type": "Polygon", "arcs": [[0, 2]], "properties": {"name": "east"}},
+                ],
+            }
+        },
+    }
+    path.write_text(json.dumps(topology), encoding="utf-8")
+    regions = read_regions(path, None)
+    assert regions.names == ("west", "east")
+    assert [shape.area for shape in regions.geometries] == pytest.approx([100, 100])
+
+
+def codes_file(path: Path, values: object, **profile: Any) -> Path:
+    array = np.asarray(values)
+    given = {"crs": "EPSG:4326", "transform": rasterio.Affine(1, 0, 100, 0, -1, 22), **profile}
+    with rasterio.open(
+        path,
+        "w",
+        driver="GTiff",
+        height=array.shape[0],
+        width=array.shape[1],
+        count=1,
+        dtype=array.dtype,
+        **given,
+    ) as file:
+        file.write(array, 1)
+    return path
+
+
+def test_a_raster_of_codes(tmp_path: Path) -> None:
+    path = codes_file(
+        tmp_path / "codes.tif", np.array([[1, 1, 0], [7, 1, 255]], np.uint8), nodata=255
+    )
+    regions = read_regions(path, None, {"1": "North", "9": "Nowhere"})
+    assert regions.names == ("North", "region 7")
+    assert [shape.area for shape in regions.geometries] == pytest.approx([3, 1])
+    assert regions.geometries[1].bounds == (100, 20, 101, 21)
+    assert "no cell of code 9" in regions.notes[0]
+    joined = read_regions(path, None, {"1": "All", "7": "All"})
+    assert joined.names == ("All",)
+    assert joined.geometries[0].area == pytest.approx(4)
+
+
+def test_rasters_that_are_no_codes(tmp_path: Path) -> None:
+    heights = codes_file(tmp_path / "heights.tif", np.array([[1.5, 2.0]], np.float32))
+    with pytest.raises(InputDataError, match="other than whole numbers"):
+        read_regions(heights, None)
+    empty = codes_file(tmp_path / "empty.tif", np.zeros((2, 2), np.int16))
+    with pytest.raises(InputDataError, match="no code but 0"):
+        read_regions(empty, None)
+    metres = codes_file(tmp_path / "metres.tif", np.ones((2, 2), np.int16), crs="EPSG:32648")
+    with pytest.raises(InputDataError, match="raster in degrees"):
+        read_regions(metres, None)
+    broken = tmp_path / "broken.tif"
+    broken.write_bytes(b"II*\x00nothing")
+    with pytest.raises(InputDataError, match="cannot be read"):
+        read_regions(broken, None)
+
+
+def test_real_district_codes() -> None:
+    """A real country's codes (PyAEZ's Laos case, MIT): promised are 1 to 5, the file holds 1."""
+    path = Path(__file__).parents[2] / "shared" / "data" / "laos" / "admin.tif"
+    if not path.exists():
+        pytest.skip("the real data laos/admin.tif are not beside this repository")
+    regions = read_regions(path, None)
+    assert regions.names == ("region 1",)
+    with rasterio.open(path) as file:
+        values, affine = file.read(1), file.transform
+    for code, shape in enumerate(regions.geometries, start=1):
+        cells = (values == code).sum()
+        assert shape.is_valid
+        assert shape.area == pytest.approx(cells * -affine.a * affine.e, rel=1e-9)

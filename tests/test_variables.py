@@ -88,8 +88,8 @@ def test_layers(layer: LayerVariable) -> None:
     bands = (layer.bands,) if layer.count > 1 else ()
     assert layer.dimensions == (*bands, "latitude", "longitude")
     assert re.fullmatch(r"[a-z][a-z0-9_]*", layer.name)
-    assert layer.is_flags == (layer.units == "")
-    if not layer.is_flags:
+    assert layer.is_whole == (layer.units == "")
+    if not layer.is_whole:
         assert not Unit(layer.units).is_unknown()
 
 

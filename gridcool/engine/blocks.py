@@ -20,7 +20,7 @@ from gridcool.engine.orientations import compass, meridian
 from gridcool.engine.plan import Plan
 from gridcool.engine.response import Response, path_integrals
 from gridcool.engine.strips import layer_bands, solve_strip
-from gridcool.variables import layer_variables
+from gridcool.variables import engine_layers, layer_variables
 
 FloatArray = NDArray[np.floating]
 
@@ -116,8 +116,8 @@ def plan_for(
         error=error or InputError(),
         layers=tuple(
             name
-            for name, layer in layer_variables().items()
-            if not layer.on_request or name in extra_layers
+            for name in engine_layers()
+            if not layer_variables()[name].on_request or name in extra_layers
         ),
     )
 

@@ -112,8 +112,9 @@ def annual_field(name: str, among: Mapping[str, xr.Dataset], section: str) -> xr
                 weights = xr.DataArray(month_weights().astype(np.float32), dims="month")
                 values = (values * weights).sum("month", skipna=False).astype(np.float32)
             if set(values.dims) != {"latitude", "longitude"}:
+                dimensions = ", ".join(map(str, values.dims))
                 raise SettingsError(
-                    f"{section} layer = {name!r} has the dimensions {', '.join(values.dims)}; "
+                    f"{section} layer = {name!r} has the dimensions {dimensions}; "
                     "name a layer with one value a cell or one a month."
                 )
             return values

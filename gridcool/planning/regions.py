@@ -1,4 +1,4 @@
-"""Regions: named areas from a polygon file or boxes, and which share of each cell they cover.
+"""Regions: named areas, boxes among them, and which share of each cell they cover.
 
 Geometries are kept in degrees between 180°W and 180°E with straight edges in longitude and
 latitude, as RFC 7946 (GeoJSON) draws them. What was drawn across the antimeridian is cut there.
@@ -6,31 +6,25 @@ latitude, as RFC 7946 (GeoJSON) draws them. What was drawn across the antimeridi
 
 from __future__ import annotations
 
-import difflib
 import warnings
 from dataclasses import dataclass
-from pathlib import Path
-from typing import Any
 
 import numpy as np
-import pyogrio
 import shapely
 from exactextract import exact_extract
 from exactextract.raster import NumPyRasterSource
 from numpy.typing import NDArray
-from pyproj.exceptions import ProjError
 from shapely import affinity
 from shapely.geometry.base import BaseGeometry
 
-from gridcool.errors import InputDataError, SettingsError
 from gridcool.grid import Bounds, Grid, zone_area
+from gridcool.planning.shapes import polygons, within_globe
 
 FloatArray = NDArray[np.floating]
 
 WGS84 = "EPSG:4326"
 SEGMENT_DEGREES = 0.05  # edges are bent into the equal-area plane in pieces of this length,
 SEGMENT_SHARE = 1 / 64  # or of this share of the geometry's extent if that is less
-COMMON_NAMES = ("name", "NAME", "Name", "region", "district")
 
 
 @dataclass(frozen=True)
@@ -72,72 +66,6 @@ class Cover:
     areas: FloatArray
 
 
-def read_regions(path: Path, name: str | None) -> Regions:
-    """Read named polygons from any file that GDAL reads.
-
-    Rows of the same name become one region.
-
-    Parameters
-    ----------
-    path : Path
-    name : str or None
-        Attribute with the names; None takes a usual one, or else numbers the rows.
-
-    Raises
-    ------
-    InputDataError
-        If the file is missing, is not a polygon file, or holds no polygons.
-    SettingsError
-        If it has no such attribute.
-    """
-    if not path.exists():
-        raise InputDataError(f"Region file {path} does not exist; check [regions] path.")
-    try:
-        layers = [(name, kind or "") for name, kind in pyogrio.list_layers(path)]
-        polygonal = [name for name, kind in layers if "Polygon" in kind] or [n for n, _ in layers]
-        frame = pyogrio.read_dataframe(path, layer=next(iter(polygonal), None))
-    except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError) as problem:
-        raise InputDataError(
-            f"Region file {path} cannot be read as polygons ({problem}); "
-            "give a GeoPackage, GeoJSON or Shapefile."
-        ) from None
-    if "geometry" not in frame:
-        raise InputDataError(f"Region file {path} holds a table without geometries.")
-    notes = []
-    if len(polygonal) > 1:
-        notes.append(f"{path.name} has several layers of polygons; {polygonal[0]} is used.")
-    if frame.crs is None:
-        if np.abs(frame.total_bounds).max() > 360:
-            raise InputDataError(
-                f"Region file {path} states no coordinate reference system and is not in degrees; "
-                "save it with one."
-            )
-        notes.append(f"{path.name} states no coordinate reference system; degrees are assumed.")
-        frame = frame.set_crs(WGS84)
-    try:
-        frame = frame.to_crs(WGS84)
-    except ProjError as problem:
-        raise InputDataError(
-            f"Region file {path} cannot be brought to WGS 84: {problem}."
-        ) from None
-    if np.abs(frame.bounds[["miny", "maxy"]].to_numpy()).max(initial=0.0) > 90 + 1e-6:
-        raise InputDataError(
-            f"Region file {path} has latitudes beyond the poles; check its coordinate reference "
-            "system and the order of its axes."
-        )
-    names = _names(frame, path, name)
-    collected: dict[str, list[BaseGeometry]] = {}
-    for label, geometry in zip(names, frame.geometry, strict=True):
-        usable = _usable(geometry)
-        if usable.is_empty:
-            notes.append(f"{label} in {path.name} has no area.")
-        collected.setdefault(label, []).append(usable)
-    if all(part.is_empty for parts in collected.values() for part in parts):
-        raise InputDataError(f"Region file {path} holds no polygons.")
-    merged = tuple(shapely.union_all(parts) for parts in collected.values())
-    return Regions(tuple(collected), merged, tuple(notes))
-
-
 def box_regions(bounds: Bounds, size: float) -> Regions:
     """Boxes of some degrees over the bounds, named after their south-west corner.
 
@@ -152,7 +80,7 @@ def box_regions(bounds: Bounds, size: float) -> Regions:
             left, right = max(x, bounds.west), min(x + size, bounds.east)
             name = f"{_degrees(y, 'NS', 2)} {_degrees((x + 180) % 360 - 180, 'EW', 3)}"
             # A grid that starts inside a box meets its other part at the far end.
-            box = _within_globe(shapely.box(left, low, right, high))
+            box = within_globe(shapely.box(left, low, right, high))
             pieces.setdefault(name, []).append(box)
     return Regions(tuple(pieces), tuple(shapely.union_all(parts) for parts in pieces.values()))
 
@@ -223,82 +151,6 @@ def _equal_area(degrees: NDArray[np.float64]) -> NDArray[np.float64]:
     return np.column_stack([longitude / 360.0, zone_area(np.zeros_like(latitude), latitude)])
 
 
-def _names(frame: Any, path: Path, name: str | None) -> list[str]:
-    attributes = [column for column in frame.columns if column != "geometry"]
-    if name is not None and name not in attributes:
-        near = difflib.get_close_matches(name, attributes, n=1, cutoff=0.5)
-        hint = f"did you mean {near[0]}?" if near else f"it has {', '.join(attributes) or 'none'}."
-        raise SettingsError(f"[regions] name: {path} has no attribute {name}; {hint}")
-    chosen = name or next((each for each in COMMON_NAMES if each in attributes), None)
-    if chosen is None:
-        return [f"Region {number}" for number in range(1, len(frame) + 1)]
-    return [
-        f"Unnamed {number}" if value is None or value != value else str(value)
-        for number, value in enumerate(frame[chosen], start=1)
-    ]
-
-
-def _usable(geometry: BaseGeometry | None) -> BaseGeometry:
-    """Valid polygons within the globe, or nothing."""
-    if geometry is None or geometry.is_empty:
-        return shapely.Polygon()
-    drawn = [shapely.make_valid(_unwrapped(polygon)) for polygon in _polygons(geometry)]
-    return _within_globe(shapely.union_all([part for each in drawn for part in _polygons(each)]))
-
-
-def _polygons(geometry: BaseGeometry) -> list[Any]:
-    """All polygons in a geometry of any kind."""
-    if geometry.geom_type == "Polygon":
-        return [geometry]
-    return [polygon for part in getattr(geometry, "geoms", ()) for polygon in _polygons(part)]
-
-
-def _unwrapped(polygon: Any) -> Any:
-    """The polygon with its rings continuous in longitude, past 180° if they go there."""
-    shell = _unwrapped_ring(shapely.get_coordinates(polygon.exterior))
-    holes = []
-    for ring in polygon.interiors:
-        hole = _unwrapped_ring(shapely.get_coordinates(ring))
-        turns = np.round((shell[:, 0].mean() - hole[:, 0].mean()) / 360)
-        holes.append(hole + np.array([360.0 * turns, 0.0]))
-    return shapely.Polygon(shell, holes)
-
-
-def _unwrapped_ring(ring: FloatArray) -> FloatArray:
-    """Follow a ring by its short steps; a step of more than half a turn went across 180°.
-
-    Steps from edge to edge of the map (exactly a whole turn, or along a pole) stay as drawn. A ring
-    that does not close has gone round a pole, and is closed along it.
-    """
-    longitude, latitude = ring[:, 0], ring[:, 1]
-    steps = np.diff(longitude)
-    along_pole = (np.abs(latitude[1:]) > 89.99) & (np.abs(latitude[:-1]) > 89.99)
-    crossing = (np.abs(steps) > 180) & (np.abs(np.abs(steps) - 360) > 1e-6) & ~along_pole
-    if not crossing.any():
-        return ring
-    turns = np.concatenate([[0.0], -np.cumsum(np.where(crossing, np.sign(steps), 0.0))])
-    opened = np.column_stack([longitude + 360 * turns, latitude])
-    if turns[-1] == 0:
-        return opened
-    pole = np.copysign(90.0, latitude.mean())
-    ends = [[opened[-1, 0], pole], [opened[0, 0], pole], opened[0].tolist()]
-    return np.concatenate([opened, ends])
-
-
-def _within_globe(geometry: BaseGeometry) -> BaseGeometry:
-    """Cut at the antimeridian what runs past it and bring it back between 180°W and 180°E."""
-    west, _, east, _ = geometry.bounds if not geometry.is_empty else (0.0, 0.0, 0.0, 0.0)
-    if west >= -180 and east <= 180:
-        return geometry
-    first, last = int(np.floor((west + 180) / 360)), int(np.ceil((east - 180) / 360))
-    pieces = []
-    for turn in range(first, last + 1):
-        window = shapely.box(-180 + 360 * turn, -90, 180 + 360 * turn, 90)
-        piece = shapely.intersection(geometry, window)
-        pieces.extend(_polygons(affinity.translate(piece, xoff=-360 * turn)))
-    return shapely.union_all(pieces)
-
-
 def _on_grid(geometry: BaseGeometry, grid: Grid) -> BaseGeometry:
     """The part of a region on the grid, in the grid's own longitudes."""
     bounds = grid.bounds
@@ -306,7 +158,7 @@ def _on_grid(geometry: BaseGeometry, grid: Grid) -> BaseGeometry:
     pieces = [
         polygon
         for turn in (0, 360)
-        for polygon in _polygons(
+        for polygon in polygons(
             shapely.intersection(affinity.translate(geometry, xoff=turn), window)
         )
     ]

@@ -26,6 +26,7 @@ from rasterio.windows import Window
 
 from gridcool.grid import Grid
 from gridcool.products.failure import output_errors
+from gridcool.products.ramps import MISSING, class_colours
 from gridcool.products.statistics import BandStatistics, RowStatistics
 from gridcool.variables import LayerVariable
 
@@ -56,7 +57,9 @@ def band_names(layer: LayerVariable) -> tuple[str, ...]:
 
 
 def layer_dtype(layer: LayerVariable) -> str:
-    """Single precision for quantities, 16 bits for flags."""
+    """Single precision for quantities, 16 bits for flags, 8 for classes."""
+    if layer.classes:
+        return "uint8"
     return "uint16" if layer.is_flags else "float32"
 
 
@@ -112,7 +115,7 @@ class StagedLayer:
             crs=f"EPSG:{EPSG}",
             transform=rasterio.Affine(*self.grid.affine),
             # Flags need no nodata: 0 is "nothing to report", and bits say what is missing.
-            nodata=None if self.layer.is_flags else np.nan,
+            nodata=None if self.layer.is_whole else np.nan,
             interleave="band",
             tiled=False,
             blockysize=strip_rows,
@@ -140,6 +143,8 @@ class StagedLayer:
                 if self.layer.units:
                     self._file.set_band_unit(index, self.layer.units)
                 self._file.update_tags(index, **_statistics_tags(self.statistics[index - 1]))
+            if self.layer.classes:
+                self._file.write_colormap(1, colour_table(self.layer))
             self.close()
             expected = self.bands * self.grid.rows * self.grid.columns
             expected *= np.dtype(layer_dtype(self.layer)).itemsize
@@ -206,12 +211,21 @@ def _add_overviews(staged: StagedLayer) -> None:
             file.build_overviews(factors, overview_resampling(staged.layer))
 
 
+def colour_table(layer: LayerVariable) -> dict[int, tuple[int, int, int, int]]:
+    """Red, green, blue and opacity of each class; what has none is light grey."""
+    colours = class_colours(len(layer.classes) - 1)
+    table = {0: (*MISSING, 255)}  # TIFF's colour tables know no opacity
+    for each, colour in zip(layer.classes[1:], colours, strict=True):
+        table[each.value] = (*colour, 255)
+    return table
+
+
 def overview_resampling(layer: LayerVariable) -> Resampling:
     """How a coarser copy is made: means for quantities, one of the values where means mislead.
 
     Between 359° and 1° lies north and not south, and between March and September no month.
     """
-    if layer.is_flags:
+    if layer.is_whole:
         return Resampling.mode
     return Resampling.nearest if layer.ramp in ("compass", "month") else Resampling.average
 
@@ -238,5 +252,8 @@ def _dataset_tags(layer: LayerVariable, attributes: Mapping[str, str]) -> dict[s
         "caution": layer.caution,
     }
     bits = {f"flag_{flag.value}": f"{flag.meaning}: {flag.description}" for flag in layer.flags}
-    tags = {**attributes, **own, **bits}
+    classes = {
+        f"class_{each.value}": f"{each.meaning}: {each.description}" for each in layer.classes
+    }
+    tags = {**attributes, **own, **bits, **classes}
     return {key: value for key, value in tags.items() if value}

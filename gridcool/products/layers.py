@@ -28,7 +28,7 @@ from gridcool.products.geotiff import (
 from gridcool.products.netcdf import NETCDF_NAME, write_netcdf
 from gridcool.products.progress import Progress, Report
 from gridcool.products.verify import verify_layers
-from gridcool.variables import layer_variables
+from gridcool.variables import LayerVariable, layer_variables
 
 STRIP_ROWS = 256  # for layers that are already in memory
 
@@ -39,6 +39,7 @@ def write_layers(
     folder: Path,
     *,
     attributes: Mapping[str, str],
+    declared: Mapping[str, LayerVariable] | None = None,
     on_progress: Progress | None = None,
 ) -> list[Path]:
     """Compute all layers in one pass, write their files, reopen and compare them.
@@ -57,6 +58,9 @@ def write_layers(
         An existing folder, to be filled with ``layers/<name>.tif`` and ``layers.nc``.
     attributes : mapping of str
         For every file: title, history, source, references, comment …
+    declared : mapping of LayerVariable, optional
+        Declarations that stand for those of ``variables.toml``, such as flags that the settings
+        name.
     on_progress : callable, optional
         Called with what is being done ("computing", "writing", then "verifying"), how many steps
         are done, and how many there are. Other threads may call it, never two at once.
@@ -77,7 +81,8 @@ def write_layers(
     -----
     Whatever the failure, nothing of what was begun is left in ``folder``.
     """
-    arrays = _arrays(dataset, grid)
+    known = {**layer_variables(), **(declared or {})}
+    arrays = _arrays(dataset, grid, known)
     products, netcdf = folder / LAYER_FOLDER, folder / NETCDF_NAME
     with ExitStack() as undo:
         with output_errors(products):
@@ -86,7 +91,7 @@ def write_layers(
             stage = Path(tempfile.mkdtemp(prefix=".stage-", dir=folder))
         undo.callback(netcdf.unlink, missing_ok=True)
         try:
-            staged = _compute(arrays, grid, stage, attributes, on_progress)
+            staged = _compute(arrays, grid, known, stage, attributes, on_progress)
             written = _write(staged, grid, folder, attributes, on_progress)
         finally:
             shutil.rmtree(stage, ignore_errors=True)
@@ -95,7 +100,9 @@ def write_layers(
     return [*written, netcdf]
 
 
-def _arrays(dataset: xr.Dataset, grid: Grid) -> dict[str, da.Array]:
+def _arrays(
+    dataset: xr.Dataset, grid: Grid, known: Mapping[str, LayerVariable]
+) -> dict[str, da.Array]:
     """The layers as dask arrays in strips that span the whole width, checked against the grid."""
     for axis, centres in (("latitude", grid.latitudes), ("longitude", grid.longitudes)):
         step = grid.latitude_step if axis == "latitude" else grid.longitude_step
@@ -104,7 +111,7 @@ def _arrays(dataset: xr.Dataset, grid: Grid) -> dict[str, da.Array]:
             raise ValueError(f"the dataset's {axis}s are not those of the grid")
     arrays = {}
     for name, array in dataset.data_vars.items():
-        layer = layer_variables().get(str(name))
+        layer = known.get(str(name))
         if layer is None:
             raise ValueError(f"{name} is not a declared layer")
         dims = layer.dimensions
@@ -119,6 +126,7 @@ def _arrays(dataset: xr.Dataset, grid: Grid) -> dict[str, da.Array]:
 def _compute(
     arrays: Mapping[str, da.Array],
     grid: Grid,
+    known: Mapping[str, LayerVariable],
     stage: Path,
     attributes: Mapping[str, str],
     on_progress: Progress | None,
@@ -128,9 +136,7 @@ def _compute(
     with ExitStack() as files, gdal_environment():
         staged = []
         for name, array in arrays.items():
-            target = StagedLayer(
-                stage, layer_variables()[name], grid, array.chunks[-2][0], report.advance
-            )
+            target = StagedLayer(stage, known[name], grid, array.chunks[-2][0], report.advance)
             files.callback(target.close)
             staged.append(target)
         targets: list[Any] = list(staged)

@@ -151,7 +151,7 @@ def _declare(file: Any, staged: StagedLayer, chunk: tuple[int, int]) -> Any:
         shuffle=True,
         chunksizes=(1, *chunk) if banded else chunk,
         chunk_cache=CHUNK_CACHE,
-        fill_value=False if layer.is_flags else np.float32(np.nan),
+        fill_value=False if layer.is_whole else np.float32(np.nan),
     )
     variable.set_auto_maskandscale(False)
     variable.setncatts(_attributes(layer, staged))
@@ -175,6 +175,10 @@ def _attributes(layer: LayerVariable, staged: StagedLayer) -> dict[str, Any]:
         attributes["flag_masks"] = np.array([flag.value for flag in layer.flags], np.uint16)
         attributes["flag_meanings"] = " ".join(flag.meaning for flag in layer.flags)
         attributes["comment"] = "; ".join(f"{f.meaning}: {f.description}" for f in layer.flags)
+    if layer.classes:
+        attributes["flag_values"] = np.array([each.value for each in layer.classes], np.uint8)
+        attributes["flag_meanings"] = " ".join(each.meaning for each in layer.classes)
+        attributes["comment"] = "; ".join(f"{c.meaning}: {c.description}" for c in layer.classes)
     known = [band for band in staged.statistics if band.count]
     if known:
         span = min(band.minimum for band in known), max(band.maximum for band in known)

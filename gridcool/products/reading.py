@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -25,3 +26,13 @@ def read_layer(product: Path, name: str) -> NDArray[Any]:
     with rasterio.open(product / LAYER_FOLDER / f"{name}.tif") as file:
         values: NDArray[Any] = file.read()
     return np.squeeze(values, axis=0) if len(values) == 1 else values
+
+
+def layer_reader(product: Path) -> Callable[[str], NDArray[Any] | None]:
+    """A function that reads a product's layer by its name; None where there is no such layer."""
+
+    def read(name: str) -> NDArray[Any] | None:
+        path = product / LAYER_FOLDER / f"{name}.tif"
+        return read_layer(product, name) if path.exists() else None
+
+    return read

@@ -1,0 +1,143 @@
+"""Rank intervals: the error model by hand, and how often the truth lies inside."""
+
+from __future__ import annotations
+
+import importlib.util
+from dataclasses import replace
+from pathlib import Path
+from types import ModuleType
+
+import numpy as np
+import pytest
+
+from gridcool.grid import Grid
+from gridcool.planning.confidence import (
+    ErrorModel,
+    error_shares,
+    patches,
+    prior,
+    rank_confidence,
+)
+from gridcool.planning.pieces import Pieces
+
+GLOBE = Grid(-180.0, 90.0, 1.0, 1.0, 180, 360)
+STRIP = Grid(0.0, 1.0, 1.0, 1.0, 1, 40)  # along the equator, 111 km a cell
+
+
+def pieces(*regions: list[int]) -> Pieces:
+    """Regions of whole cells of equal area."""
+    cells = np.array([cell for region in regions for cell in region])
+    return Pieces(cells, np.ones(len(cells)), np.cumsum([len(region) for region in regions]))
+
+
+def study() -> ModuleType:
+    path = Path(__file__).parents[1] / "scripts" / "rank_coverage.py"
+    spec = importlib.util.spec_from_file_location("rank_coverage", path)
+    assert spec is not None
+    assert spec.loader is not None
+    module = importlib.util.module_from_spec(spec)
+    spec.loader.exec_module(module)
+    return module
+
+
+def test_patches_are_about_as_wide_as_high_and_cover_the_globe() -> None:
+    patch = patches(GLOBE, 500.0)
+    assert patch.shape == (180 * 360,)
+    areas = np.bincount(patch, weights=np.repeat(GLOBE.row_areas(), 360))
+    assert (areas > 0).all()
+    usual = np.sqrt(np.median(areas)) / 1000
+    assert usual == pytest.approx(500, rel=0.1)
+    assert areas.max() < 2 * np.median(areas)
+    # One patch holds neighbours, and none that is far away.
+    assert patch[90 * 360 + 180] == patch[90 * 360 + 181]
+    assert patch[90 * 360 + 180] != patch[90 * 360 + 190]
+
+
+def test_common_errors_add_up_and_local_ones_average() -> None:
+    spread = np.full(40, 6.0)
+    near, wide = [0, 1], list(range(40))
+    regions = pieces(near, wide)
+    common = ErrorModel(common_share=1.0)
+    everywhere, by_patch = error_shares(regions, spread, STRIP, common)
+    assert everywhere.tolist() == pytest.approx([6, 6])
+    assert by_patch.toarray().sum() == 0
+    local = ErrorModel(common_share=0.0, correlation_km=500.0)
+    everywhere, by_patch = error_shares(regions, spread, STRIP, local)
+    total = np.sqrt((by_patch.toarray() ** 2).sum(axis=1))
+    assert total[0] == pytest.approx(6)  # inside one patch nothing averages
+    assert total[1] == pytest.approx(6 / 3, rel=0.15)  # about nine patches of 500 km
+    half = ErrorModel(common_share=0.5)
+    everywhere, by_patch = error_shares(regions, spread, STRIP, half)
+    assert np.hypot(everywhere[0], by_patch.toarray()[0].max()) == pytest.approx(6)
+
+
+def test_neighbours_share_their_errors() -> None:
+    spread = np.full(40, 6.0)
+    model = ErrorModel(common_share=0.0, correlation_km=1000.0)
+    _, by_patch = error_shares(pieces([0], [1], [30]), spread, STRIP, model)
+    covariance = (by_patch @ by_patch.T).toarray()
+    assert covariance[0, 1] == pytest.approx(36)
+    assert covariance[0, 2] == 0
+
+
+def test_shared_errors_leave_ranks_alone() -> None:
+    """All regions err alike: the order is sure, whatever the size of the error."""
+    regions, values = pieces([0], [12], [24]), np.array([30.0, 20.0, 10.0])
+    spread = np.full(40, 50.0)
+    alike = rank_confidence(values, regions, spread, STRIP, ErrorModel(common_share=1.0), top=1)
+    assert alike.low.tolist() == alike.high.tolist() == [1, 2, 3]
+    assert alike.top.tolist() == [1, 0, 0]
+    apart = rank_confidence(values, regions, spread, STRIP, ErrorModel(common_share=0.0), top=1)
+    assert (apart.high - apart.low).min() >= 1
+    assert apart.spread == pytest.approx([50, 50, 50])
+    assert 0.3 < apart.top[0] < 0.9
+
+
+def test_the_same_seed_gives_the_same_and_another_nearly() -> None:
+    regions, values = pieces(*[[n] for n in range(0, 40, 4)]), np.linspace(10, 0, 10)
+    spread = np.full(40, 3.0)
+    model = ErrorModel(draws=2000)
+    first = rank_confidence(values, regions, spread, STRIP, model, top=3)
+    again = rank_confidence(values, regions, spread, STRIP, model, top=3)
+    assert first.top.tolist() == again.top.tolist()
+    other = rank_confidence(values, regions, spread, STRIP, replace(model, seed=2), top=3)
+    assert first.top.tolist() != other.top.tolist()
+    np.testing.assert_allclose(first.top, other.top, atol=0.06)
+    assert first.top.sum() == pytest.approx(3)
+
+
+def test_no_error_no_doubt_and_one_region() -> None:
+    regions, values = pieces([0], [8], [16]), np.array([3.0, 2.0, 1.0])
+    sure = rank_confidence(values, regions, np.zeros(40), STRIP, ErrorModel(), top=2)
+    assert sure.low.tolist() == sure.high.tolist() == [1, 2, 3]
+    assert sure.top.tolist() == [1, 1, 0]
+    alone = rank_confidence(values[:1], pieces([0]), np.ones(40), STRIP, ErrorModel(), top=3)
+    assert alone.low.tolist() == alone.high.tolist() == [1]
+
+
+def test_equal_values_without_error_keep_their_order() -> None:
+    regions = pieces([0], [8], [16])
+    found = rank_confidence(np.ones(3), regions, np.zeros(40), STRIP, ErrorModel(), top=1)
+    assert found.low.tolist() == [1, 2, 3]
+
+
+def test_prior_takes_the_noise_out() -> None:
+    values = np.array([0.0, 10.0, 20.0, 30.0, 40.0])
+    seen = values.var(ddof=1)
+    centre, variance = prior(values, 100 * np.eye(5))
+    assert centre == 20
+    assert variance == pytest.approx(seen - 100)
+    _, common = prior(values, np.full((5, 5), 100.0))
+    assert common == pytest.approx(seen)  # an error that all share spreads nothing
+    _, drowned = prior(values, 1e4 * np.eye(5))
+    assert drowned == pytest.approx(seen / 6)
+
+
+@pytest.mark.parametrize(("count", "noise"), [(30, 0.3), (30, 1.0), (100, 1.0)])
+def test_the_truth_lies_inside_nine_times_in_ten(count: int, noise: float) -> None:
+    """scripts/rank_coverage.py, with fewer trials; the noise is told over the truth's spread."""
+    ours, simple, width = study().coverage(count, noise, trials=40)
+    assert 0.86 < ours < 0.97
+    assert 0.1 < width < 0.7  # not by saying that everything is possible
+    if noise >= 1:
+        assert simple < ours - 0.02  # noise added to noisy values: too narrow, too far apart
