@@ -37,6 +37,8 @@ class Steps:
         CF name of the calendar, where steps are dates.
     description : str
     warnings : tuple of str
+    step_years : tuple of int
+        Year of each step, or a number that stands for it; empty if there is none.
     """
 
     months: tuple[int, ...]
@@ -44,6 +46,7 @@ class Steps:
     calendar: str
     description: str
     warnings: tuple[str, ...] = ()
+    step_years: tuple[int, ...] = ()
 
     @property
     def is_annual(self) -> bool:
@@ -119,7 +122,8 @@ def _bare(count: int) -> Steps:
     months = tuple(range(12)) * years
     description = "12 months" if years == 1 else f"{count} months, averaged over {years} years"
     note = "the time axis has no dates; the first step is taken as January."
-    return Steps(months, 0 if years == 1 else years, "", description, (note,))
+    of_step = tuple(np.repeat(np.arange(years), 12).tolist())
+    return Steps(months, 0 if years == 1 else years, "", description, (note,), of_step)
 
 
 def _dated(
@@ -198,17 +202,19 @@ def _monthly(dates: list[tuple[int, int]], calendar: str) -> Steps:
         raise InputDataError(
             f"its {len(dates)} time steps leave out {listed}; give all twelve months."
         )
-    seen = sorted({year for year, _ in dates})
+    of_step = tuple(year for year, _ in dates)
+    seen = sorted(set(of_step))
     in_calendar = f", {calendar} calendar" if calendar not in ("", "standard", "gregorian") else ""
     if len(dates) == 12:
-        return Steps(months, 1, calendar, f"12 months of {_span(seen)}{in_calendar}")
+        description = f"12 months of {_span(seen)}{in_calendar}"
+        return Steps(months, 1, calendar, description, step_years=of_step)
     counts = np.bincount(months, minlength=12)
     unequal = ""
     if counts.min() != counts.max():
         unequal = f"; {counts.min()} to {counts.max()} steps a month"
     description = f"{len(dates)} steps of {_span(seen)}, averaged by month{unequal}{in_calendar}"
     years = max(1, round(len(dates) / 12)) if len(dates) < 13 * len(seen) else len(seen)
-    return Steps(months, years, calendar, description)
+    return Steps(months, years, calendar, description, step_years=of_step)
 
 
 def _span(years: list[int]) -> str:

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import Any
+from dataclasses import dataclass, replace
+from functools import partial
 
 import numpy as np
 import xarray as xr
@@ -14,9 +14,11 @@ from gridcool.inputs.axes import Axis, latitude_axis, longitude_axis
 from gridcool.inputs.calendar import Steps, annual, read_steps
 from gridcool.inputs.conventions import Layout, find_layout
 from gridcool.inputs.hours import Hours, read_hours
+from gridcool.inputs.means import MonthlyMeans
 from gridcool.inputs.opening import Opened, open_file
-from gridcool.inputs.packing import Packing, packing_from
+from gridcool.inputs.packing import packing_from
 from gridcool.inputs.spec import InputSpec, located
+from gridcool.inputs.stored import Stored
 from gridcool.inputs.units import Conversion, conversion_for, ratio_conversion
 from gridcool.variables import InputVariable, input_variables
 
@@ -24,6 +26,8 @@ FloatArray = NDArray[np.float64]
 
 #: How far beyond what is possible a share may lie by rounding, as a share of its range.
 ROUNDING_SHARE = 0.01
+#: Inputs whose spread from year to year feeds the uncertainty, where the file has years.
+SPREAD = ("albedo", "cloud_fraction", "temperature_range")
 
 
 @dataclass(frozen=True, eq=False)
@@ -39,8 +43,9 @@ class Field:
     latitude, longitude : Axis
     steps : Steps
     hours : Hours or None
-    packing : Packing
     conversion : Conversion
+    means : MonthlyMeans
+        Values by month, converted unless a ratio is still to be formed.
     divisor : Field or None
         What the values are divided by.
     """
@@ -53,8 +58,8 @@ class Field:
     longitude: Axis
     steps: Steps
     hours: Hours | None
-    packing: Packing
     conversion: Conversion
+    means: MonthlyMeans
     divisor: Field | None = None
 
     @property
@@ -85,9 +90,9 @@ class Field:
 
     def read_raw(self, rows: slice) -> NDArray[np.float32]:
         """The same without rounding off."""
-        values = self._climatology(rows)
+        values = self.means.read(rows)
         if self.divisor is not None:
-            below = self.divisor._climatology(rows)
+            below = self.divisor.means.read(rows)
             dark = ~(below >= self.spec.divisor_minimum)
             values = np.where(dark, np.nan, values / np.where(dark, 1, below)).astype(np.float32)
             values *= np.float32(self.conversion.factor)
@@ -106,8 +111,8 @@ class Field:
 
     @property
     def has_years(self) -> bool:
-        """Whether the file tells how much years differ."""
-        return self.steps.years > 1 and self.hours is None and self.divisor is None
+        """Whether the file tells how much years differ, and that is of use."""
+        return _has_years(self.spec, self.steps, self.hours)
 
     def read_standard_error(self, rows: slice) -> NDArray[np.float32]:
         """Standard error of the monthly means of `read`, from the spread of the file's years.
@@ -117,62 +122,7 @@ class Field:
         array, shape (12, rows, columns)
             NaN where fewer than two years are known.
         """
-        shape = (12, rows.stop - rows.start, len(self.longitude))
-        total, squares, count = np.zeros(shape), np.zeros(shape), np.zeros(shape)
-        index = np.arange(12)[:, None, None]
-        for step, month in enumerate(self.steps.months):
-            value = self._step(step, rows).astype(np.float64)
-            here = (index == month) & ~np.isnan(value)
-            total += np.where(here, value, 0)
-            squares += np.where(here, value**2, 0)
-            count += here
-        several = count > 1
-        n = np.where(several, count, 2)
-        variance = np.maximum(squares - total**2 / n, 0) / (n - 1)
-        return np.where(several, np.sqrt(variance / n), np.nan).astype(np.float32)
-
-    def _climatology(self, rows: slice) -> NDArray[np.float32]:
-        """Monthly means of the file's steps, converted unless a ratio is still to be formed."""
-        if self.steps.is_annual:
-            return self._step(0, rows)[np.newaxis]
-        first = self._step(0, rows)
-        if self.steps.is_plain:
-            values = np.empty((12, *first.shape), np.float32)
-            for step, month in enumerate(self.steps.months):
-                values[month] = first if step == 0 else self._step(step, rows)
-            return values
-        total = np.zeros((12, *first.shape), np.float64)
-        count = np.zeros((12, *first.shape), np.int32)
-        for step, month in enumerate(self.steps.months):
-            value = first if step == 0 else self._step(step, rows)
-            found = ~np.isnan(value)
-            total[month] += np.where(found, value, 0)
-            count[month] += found
-        return np.where(count > 0, total / np.maximum(count, 1), np.nan).astype(np.float32)
-
-    def _step(self, step: int, rows: slice) -> NDArray[np.float32]:
-        """One step of the file, shape (rows, columns) or (hours, rows, columns)."""
-        layout = self.layout
-        index: dict[Any, Any] = dict.fromkeys(layout.extra, 0)
-        index[layout.latitude] = self.latitude.in_file(rows)
-        index[layout.longitude] = self.longitude.in_file(slice(0, len(self.longitude)))
-        if layout.time is not None:
-            index[layout.time] = step
-        variable = self.opened.dataset[layout.name].variable.isel(index)
-        order = [d for d in (layout.hour, layout.latitude, layout.longitude) if d is not None]
-        try:
-            stored = variable.transpose(*order).values
-        except (OSError, RuntimeError, ValueError, IndexError) as problem:
-            reason = (str(problem).strip() or type(problem).__name__).splitlines()[0]
-            raise InputDataError(
-                f"{self.label}: the data cannot be read ({reason}); "
-                "the file is damaged or incomplete, so fetch or write it again."
-            ) from None
-        whole = self.divisor is None and not self.spec.is_ratio
-        factor, offset = (self.conversion.factor, self.conversion.offset) if whole else (1.0, 0.0)
-        values = self.packing.unpack(np.ascontiguousarray(stored), factor, offset)
-        values = values[..., :: -1 if self.latitude.reversed else 1, :]
-        return values[..., :: -1 if self.longitude.reversed else 1]
+        return self.means.read_standard_error(rows)
 
 
 def open_field(spec: InputSpec) -> Field:
@@ -199,7 +149,7 @@ def open_field(spec: InputSpec) -> Field:
         factor = ratio_conversion(*units)
     text = f"ratio of {field.layout.name} and {below.layout.name}"
     ratio = Conversion(text, known.units if known else "1", factor)
-    return Field(**{**vars(field), "conversion": ratio, "divisor": below})
+    return replace(field, conversion=ratio, divisor=below)
 
 
 def _open(spec: InputSpec, known: InputVariable | None, variable: str | None) -> Field:
@@ -212,22 +162,27 @@ def _open(spec: InputSpec, known: InputVariable | None, variable: str | None) ->
         longitude = longitude_axis(
             *_labels(dataset, layout.longitude), by_corner=latitude.by_corner
         )
-        attributes = dataset[layout.name].attrs
+        data = dataset[layout.name].variable
         ratio = spec.is_ratio
-        return Field(
-            spec=spec,
-            known=known,
-            opened=opened,
-            layout=layout,
-            latitude=latitude,
-            longitude=longitude,
-            steps=_steps(dataset, layout, known),
-            hours=_hours(dataset, layout, spec),
-            packing=packing_from(attributes, dataset[layout.name].dtype),
-            conversion=conversion_for(
-                None if ratio else known, attributes.get("units"), spec.units
-            ),
+        steps, hours = _steps(dataset, layout, known), _hours(dataset, layout, spec)
+        packing = packing_from(data.attrs, data.dtype)
+        conversion = conversion_for(None if ratio else known, data.attrs.get("units"), spec.units)
+        factor, shift = (1.0, 0.0) if ratio else (conversion.factor, conversion.offset)
+        means = MonthlyMeans(
+            Stored(data, layout, spec.label(layout.name)),
+            partial(packing.unpack, factor=factor, shift=shift),
+            steps,
+            latitude,
+            longitude,
+            spread=_has_years(spec, steps, hours),
         )
+        return Field(
+            spec, known, opened, layout, latitude, longitude, steps, hours, conversion, means
+        )
+
+
+def _has_years(spec: InputSpec, steps: Steps, hours: Hours | None) -> bool:
+    return spec.name in SPREAD and steps.years > 1 and hours is None and not spec.is_ratio
 
 
 def _labels(dataset: xr.Dataset, dim: str) -> tuple[FloatArray, FloatArray | None]:

@@ -20,8 +20,6 @@ from gridcool.inputs.spec import Finding, InputReport, InputSpec, refuse
 from gridcool.variables import input_variables
 
 GLOBE = Bounds(-180.0, -90.0, 180.0, 90.0)
-#: Inputs whose spread from year to year feeds the uncertainty, where the file has years.
-SPREAD = ("albedo", "cloud_fraction", "temperature_range")
 PAIR = ("temperature_maximum", "temperature_minimum")
 
 
@@ -112,7 +110,7 @@ def load_inputs(specs: Sequence[InputSpec], grid: Grid, chunk_rows: int) -> Inpu
         if name in PAIR:
             continue
         variables[name] = _lazy(grid, chunk_rows, field)
-        if name in SPREAD and field.has_years:
+        if field.has_years:
             variables[f"{name}_standard_error"] = _lazy_standard_error(grid, chunk_rows, field)
     if set(PAIR) <= set(fields) and "temperature_range" not in fields:
         variables["temperature_range"] = _lazy(grid, chunk_rows, *(fields[name] for name in PAIR))
