@@ -13,6 +13,7 @@ from gridcool.planning.regions import Cover, Regions
 from gridcool.planning.tracing import traced
 
 FloatArray = NDArray[np.floating]
+Part = tuple[NDArray[np.int64], FloatArray]
 
 
 def find_zones(
@@ -20,62 +21,106 @@ def find_zones(
 ) -> tuple[Regions, list[Cover]]:
     """Connected suitable cells of at least a given area.
 
-    Cells belong together where they share an edge, across 180° too. The whole grid is looked at
-    at once, so that zones do not depend on how it was computed.
+    Cells belong together where they share an edge, across 180° too; cells that meet in a corner
+    only do not, as there is no ground in a point to build on. The whole grid is looked at at once,
+    so that zones do not depend on how it was computed, nor on where a periodic grid begins.
 
     Parameters
     ----------
     suitable : array of bool, shape (rows, columns)
     grid : Grid
     minimum_area : float
-        m2; smaller groups are left out.
+        m2; smaller groups are left out, and a note says how many.
 
     Returns
     -------
     regions : Regions
-        Named "zone 1", "zone 2" and so on by falling area, the northernmost first among equals.
+        Named "zone 1", "zone 2" and so on by falling area; of the same area to the square metre
+        the northernmost, then the westernmost first.
     covers : list of Cover
         Whole cells, in the same order.
+
+    Raises
+    ------
+    ValueError
+        If the cells are not those of the grid.
     """
-    numbers, count = _joined(*ndimage.label(suitable), periodic=grid.is_periodic)
-    areas = np.zeros(count + 1)
-    rows = grid.row_areas()
-    for row in range(grid.rows):  # row by row, for the memory of a large grid
-        areas += rows[row] * np.bincount(numbers[row], minlength=count + 1)
-    areas[0] = 0.0
-    kept = np.flatnonzero(areas >= max(minimum_area, 1e-9))
-    # Numbers rise from the first row on; equal areas that differ by rounding count as equal.
-    order = kept[np.lexsort((kept, -np.round(areas[kept])))]
-    renumbered = np.zeros(count + 1, np.int32)
-    renumbered[order] = np.arange(1, len(order) + 1)
-    numbers = renumbered[numbers]
+    if suitable.shape != grid.shape:
+        raise ValueError(f"cells of shape {suitable.shape} are not on a grid of {grid.shape}")
+    numbers, groups = _connected(suitable, periodic=grid.is_periodic)
+    areas = np.bincount(groups, weights=_areas(numbers, len(groups), grid)).astype(float)
+    kept = (areas > 0) & (areas >= minimum_area)
+    renumbered = np.where(kept, np.cumsum(kept), 0).astype(np.int32)[groups]
+    for row in numbers:  # row by row, for the memory of a large grid
+        row[:] = renumbered[row]
+    parts = _parts(numbers, int(kept.sum()), grid)
     outlines = traced(numbers, grid)
-    names = tuple(f"zone {number}" for number in range(1, len(order) + 1))
-    covers = _covers(numbers, names, grid)
-    return Regions(names, tuple(outlines[number] for number in range(1, len(names) + 1))), covers
+    order = _order(parts, grid)
+    names = tuple(f"zone {place}" for place in range(1, len(order) + 1))
+    covers = [
+        Cover(name, float(parts[i][1].sum()), *parts[i])
+        for name, i in zip(names, order, strict=True)
+    ]
+    note = _left_out(areas[(areas > 0) & ~kept], minimum_area)
+    return Regions(names, tuple(outlines[i + 1] for i in order), note), covers
 
 
-def _joined(
-    numbers: NDArray[np.int32], count: int, *, periodic: bool
-) -> tuple[NDArray[np.int32], int]:
-    """Give groups that meet across the seam of a periodic grid one number."""
-    if not periodic or count == 0:
-        return numbers, count
+def _connected(
+    suitable: NDArray[np.bool_], *, periodic: bool
+) -> tuple[NDArray[np.int32], NDArray[np.intp]]:
+    """Numbers of cells connected within the array, and to which group each number belongs.
+
+    Groups differ from numbers where cells meet across the seam of a periodic grid.
+    """
+    numbers = np.empty(suitable.shape, np.int32)
+    count = int(ndimage.label(suitable, output=numbers))
+    if not periodic:
+        return numbers, np.arange(count + 1)
     west, east = numbers[:, 0], numbers[:, -1]
     meet = (west > 0) & (east > 0)
     links = coo_array((np.ones(meet.sum()), (west[meet], east[meet])), shape=(count + 1, count + 1))
-    groups, group = connected_components(links, directed=False)
-    # Components are numbered in the order of their first member, so that 0 stays 0.
-    return group.astype(np.int32)[numbers], groups - 1
+    return numbers, np.asarray(connected_components(links, directed=False)[1], np.intp)
 
 
-def _covers(numbers: NDArray[np.int32], names: tuple[str, ...], grid: Grid) -> list[Cover]:
+def _areas(numbers: NDArray[np.int32], count: int, grid: Grid) -> FloatArray:
+    """Area of the cells of each number, m2; nothing for number 0."""
+    areas = np.zeros(count)
+    for row, area in zip(numbers, grid.row_areas(), strict=True):
+        present, cells = np.unique(row, return_counts=True)
+        areas[present] += cells * area
+    areas[0] = 0.0
+    return areas
+
+
+def _parts(numbers: NDArray[np.int32], count: int, grid: Grid) -> list[Part]:
+    """Cells of the numbers 1 to ``count``, from north to south, and their areas."""
+    if count == 0:
+        return []
     flat = numbers.ravel()
     cells = np.flatnonzero(flat)
     cells = cells[np.argsort(flat[cells], kind="stable")]
-    ends = np.cumsum(np.bincount(flat[cells], minlength=len(names) + 1)[1:])
+    ends = np.cumsum(np.bincount(flat[cells], minlength=count + 1)[1:])[:-1]
     areas = grid.row_areas()[cells // grid.columns]
-    covers = []
-    for name, part in zip(names, np.split(np.arange(len(cells)), ends[:-1]), strict=False):
-        covers.append(Cover(name, float(areas[part].sum()), cells[part], areas[part]))
-    return covers
+    return list(zip(np.split(cells, ends), np.split(areas, ends), strict=True))
+
+
+def _order(parts: list[Part], grid: Grid) -> list[int]:
+    """Places of the parts in the order in which zones are named."""
+    eastward = np.argsort((grid.longitudes + 180.0) % 360.0, kind="stable")
+    place = np.argsort(eastward)  # of each column, counted from 180°W
+
+    def key(i: int) -> tuple[int, int, int]:
+        cells, areas = parts[i]
+        rows, columns = np.divmod(cells, grid.columns)
+        return -round(float(areas.sum())), int(rows[0]), int(place[columns[rows == rows[0]]].min())
+
+    return sorted(range(len(parts)), key=key)
+
+
+def _left_out(areas: FloatArray, minimum_area: float) -> tuple[str, ...]:
+    if not areas.size:
+        return ()
+    return (
+        f"{areas.size} connected areas under {minimum_area / 1e6:g} km2 are not zones; "
+        f"together they have {areas.sum() / 1e6:,.0f} km2.",
+    )
