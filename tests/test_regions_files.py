@@ -8,11 +8,11 @@ from pathlib import Path
 from typing import Any
 
 import geopandas as gpd
-import numpy as np
+import pandas as pd
 import pytest
-import rasterio
 import shapely
 from drawn_regions import GLOBE, geojson, only, stored
+from pyarrow import parquet
 from shapely import Point, Polygon, box
 
 from gridcool.errors import InputDataError, SettingsError
@@ -151,7 +151,7 @@ def test_names_that_are_missing_or_numbers(tmp_path: Path) -> None:
 def test_rows_without_area_are_kept_and_noted(tmp_path: Path) -> None:
     path = stored(tmp_path / "r.gpkg", ["a", "b"], [box(0, 0, 1, 1), None])
     regions = read_regions(path, None)
-    assert regions.notes == ("b in r.gpkg has no area.",)
+    assert regions.notes == ("No area is drawn in r.gpkg for b.",)
     _, empty = coverage(regions, grid_from_bounds(GLOBE, 10.0))
     assert (empty.name, empty.area, empty.cells.size) == ("b", 0.0, 0)
 
@@ -223,63 +223,78 @@ def test_topojson(tmp_path: Path) -> None:
     assert [shape.area for shape in regions.geometries] == pytest.approx([100, 100])
 
 
-def codes_file(path: Path, values: object, **profile: Any) -> Path:
-    array = np.asarray(values)
-    given = {"crs": "EPSG:4326", "transform": rasterio.Affine(1, 0, 100, 0, -1, 22), **profile}
-    with rasterio.open(
-        path,
-        "w",
-        driver="GTiff",
-        height=array.shape[0],
-        width=array.shape[1],
-        count=1,
-        dtype=array.dtype,
-        **given,
-    ) as file:
-        file.write(array, 1)
-    return path
+def test_topojson_in_whole_steps(tmp_path: Path) -> None:
+    """Whole steps from point to point, with a scale; an arc run backwards has its complement."""
+    topology = {
+        "type": "Topology",
+        "transform": {"scale": [0.5, 0.25], "translate": [-30.0, 10.0]},
+        "arcs": [[[20, 0], [0, 40]], [[20, 40], [-20, 0], [0, -40], [20, 0]]],
+        "objects": {
+            "land": {
+                "type": "GeometryCollection",
+                "geometries": [
+                    {"type": "Polygon", "arcs": [[-1, -2]], "properties": {"name": "west"}}
+                ],
+            }
+        },
+    }
+    path = tmp_path / "r.json"
+    path.write_text(json.dumps(topology), encoding="utf-8")
+    regions = read_regions(path, "name")
+    assert regions.geometries[0].bounds == (-30, 10, -20, 20)
+    assert regions.geometries[0].area == pytest.approx(100)
 
 
-def test_a_raster_of_codes(tmp_path: Path) -> None:
-    path = codes_file(
-        tmp_path / "codes.tif", np.array([[1, 1, 0], [7, 1, 255]], np.uint8), nodata=255
-    )
-    regions = read_regions(path, None, {"1": "North", "9": "Nowhere"})
-    assert regions.names == ("North", "region 7")
-    assert [shape.area for shape in regions.geometries] == pytest.approx([3, 1])
-    assert regions.geometries[1].bounds == (100, 20, 101, 21)
-    assert "no cell of code 9" in regions.notes[0]
-    joined = read_regions(path, None, {"1": "All", "7": "All"})
-    assert joined.names == ("All",)
-    assert joined.geometries[0].area == pytest.approx(4)
-
-
-def test_rasters_that_are_no_codes(tmp_path: Path) -> None:
-    heights = codes_file(tmp_path / "heights.tif", np.array([[1.5, 2.0]], np.float32))
-    with pytest.raises(InputDataError, match="other than whole numbers"):
-        read_regions(heights, None)
-    empty = codes_file(tmp_path / "empty.tif", np.zeros((2, 2), np.int16))
-    with pytest.raises(InputDataError, match="no code but 0"):
-        read_regions(empty, None)
-    metres = codes_file(tmp_path / "metres.tif", np.ones((2, 2), np.int16), crs="EPSG:32648")
-    with pytest.raises(InputDataError, match="raster in degrees"):
-        read_regions(metres, None)
-    broken = tmp_path / "broken.tif"
-    broken.write_bytes(b"II*\x00nothing")
-    with pytest.raises(InputDataError, match="cannot be read"):
-        read_regions(broken, None)
-
-
-def test_real_district_codes() -> None:
-    """A real country's codes (PyAEZ's Laos case, MIT): promised are 1 to 5, the file holds 1."""
-    path = Path(__file__).parents[2] / "shared" / "data" / "laos" / "admin.tif"
-    if not path.exists():
-        pytest.skip("the real data laos/admin.tif are not beside this repository")
+def test_parquet_with_another_column_and_reference_system(tmp_path: Path) -> None:
+    path = tmp_path / "r.parquet"
+    boxes().to_crs("EPSG:3857").rename_geometry("outline").to_parquet(path)
     regions = read_regions(path, None)
-    assert regions.names == ("region 1",)
-    with rasterio.open(path) as file:
-        values, affine = file.read(1), file.transform
-    for code, shape in enumerate(regions.geometries, start=1):
-        cells = (values == code).sum()
-        assert shape.is_valid
-        assert shape.area == pytest.approx(cells * -affine.a * affine.e, rel=1e-9)
+    assert regions.notes == ()
+    assert [shape.area for shape in regions.geometries] == pytest.approx([100, 50], rel=1e-9)
+    with pytest.raises(SettingsError, match="it has name"):
+        read_regions(path, "province")
+
+
+def test_parquet_with_edges_along_great_circles(tmp_path: Path) -> None:
+    path = tmp_path / "r.parquet"
+    boxes().to_parquet(path)
+    table = parquet.read_table(path)
+    said = json.loads(table.schema.metadata[b"geo"])
+    said["columns"]["geometry"]["edges"] = "spherical"
+    parquet.write_table(table.replace_schema_metadata({b"geo": json.dumps(said)}), path)
+    regions = read_regions(path, None)
+    assert regions.names == ("west", "east")
+    assert "edges follow great circles" in regions.notes[0]
+
+
+def test_parquet_without_geometries_is_refused(tmp_path: Path) -> None:
+    path = tmp_path / "r.parquet"
+    pd.DataFrame({"name": ["a"]}).to_parquet(path)
+    with pytest.raises(InputDataError, match="cannot be read as polygons") as caught:
+        read_regions(path, None)
+    assert "\n" not in str(caught.value)
+
+
+def test_what_was_mended_or_assumed_is_said_once(tmp_path: Path) -> None:
+    bow_tie = [(0, 0), (4, 4), (4, 0), (0, 4)]
+    across = [(178, -5), (-178, -5), (-177, 6), (179, 6)]
+    sound = [(20, 0), (30, 0), (30, 10)]
+    path = geojson(tmp_path / "r.geojson", [sound], [across], *[[bow_tie]] * 7)
+    assert read_regions(path, None).notes == (
+        "Edges of more than 180° in r.geojson are read as crossing 180° in Region 2.",
+        "Outlines that cross themselves in r.geojson are mended in Region 3, Region 4, Region 5, "
+        "Region 6, Region 7 and 2 more.",
+    )
+
+
+def test_a_row_without_geometry_does_not_hide_swapped_axes(tmp_path: Path) -> None:
+    swapped = Polygon([(20, 110), (26, 110), (26, 115)])
+    path = stored(tmp_path / "r.gpkg", ["a", "b"], [swapped, None])
+    with pytest.raises(InputDataError, match="latitudes beyond the poles"):
+        read_regions(path, None)
+
+
+def test_settings_for_the_other_kind_of_file(tmp_path: Path) -> None:
+    path = stored(tmp_path / "r.gpkg", ["a"], [box(0, 0, 1, 1)])
+    with pytest.raises(SettingsError, match="is not a raster of codes"):
+        read_regions(path, None, {"1": "a"})

@@ -3,28 +3,27 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Mapping
+import warnings
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
 import geopandas
 import numpy as np
 import pyogrio
-import rasterio
 import shapely
 from pyproj.exceptions import ProjError
 from shapely.geometry.base import BaseGeometry
 
 from gridcool.errors import InputDataError, SettingsError
-from gridcool.grid import Grid
+from gridcool.planning.region_codes import read_codes
 from gridcool.planning.regions import WGS84, Regions
 from gridcool.planning.shapes import usable
-from gridcool.planning.tracing import traced
 
 COMMON_NAMES = ("name", "NAME", "Name", "region", "district")
 RASTER_SUFFIXES = (".tif", ".tiff")
 PARQUET_SUFFIXES = (".parquet", ".geoparquet")
-MOST_CODES = 10_000
+MOST_NAMED = 5  # regions listed in a note
 
 
 def read_regions(path: Path, name: str | None, codes: Mapping[str, str] | None = None) -> Regions:
@@ -47,38 +46,73 @@ def read_regions(path: Path, name: str | None, codes: Mapping[str, str] | None =
     InputDataError
         If the file is missing, is not a polygon file, or holds no polygons.
     SettingsError
-        If it has no such attribute.
+        If it has no such attribute, or is not of the kind that the settings speak of.
     """
     if not path.exists():
         raise InputDataError(f"Region file {path} does not exist; check [regions] path.")
     if path.suffix.lower() in RASTER_SUFFIXES:
-        return _of_codes(path, codes or {})
+        if name is not None:
+            raise SettingsError(
+                f"[regions] name: {path} is a raster of codes without attributes; name its codes "
+                "in [regions.codes]."
+            )
+        return read_codes(path, codes or {})
+    if codes:
+        raise SettingsError(
+            f"[regions] codes: {path} is not a raster of codes; say with name which attribute "
+            "holds the names."
+        )
+    frame, notes = _table(path)
+    return _named(_in_degrees(frame, path, notes), path, name, notes)
+
+
+def _table(path: Path) -> tuple[Any, list[str]]:
+    """The file's rows with their geometries in a column "geometry", and what was assumed."""
+    notes: list[str] = []
     try:
         if path.suffix.lower() in PARQUET_SUFFIXES:
-            return _named(geopandas.read_parquet(path), path, name, [])
-        layers = [(name, kind or "") for name, kind in pyogrio.list_layers(path)]
-        polygonal = [name for name, kind in layers if "Polygon" in kind] or [n for n, _ in layers]
+            return _parquet_table(path, notes), notes
+        layers = [(layer, kind or "") for layer, kind in pyogrio.list_layers(path)]
+        polygonal = [each for each, kind in layers if "Polygon" in kind] or [n for n, _ in layers]
         frame = pyogrio.read_dataframe(path, layer=next(iter(polygonal), None))
     except (
         *(pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError),
         *(OSError, ValueError, ImportError),
     ) as problem:
         raise InputDataError(
-            f"Region file {path} cannot be read as polygons ({problem}); "
+            f"Region file {path} cannot be read as polygons ({_one_line(problem)}); "
             "give a GeoPackage, GeoJSON, Shapefile, GeoParquet or TopoJSON."
         ) from None
     if "geometry" not in frame:
         raise InputDataError(f"Region file {path} holds a table without geometries.")
-    notes = []
     if len(polygonal) > 1:
         notes.append(f"{path.name} has several layers of polygons; {polygonal[0]} is used.")
-    return _named(frame, path, name, notes)
+    return frame, notes
 
 
-def _named(frame: Any, path: Path, name: str | None, notes: list[str]) -> Regions:
-    """The regions of a table of geometries in any reference system."""
+def _parquet_table(path: Path, notes: list[str]) -> Any:
+    with warnings.catch_warnings(record=True) as heard:
+        warnings.simplefilter("always")
+        frame = geopandas.read_parquet(path)
+    for each in heard:
+        if "spherical edges" in str(each.message):
+            notes.append(
+                f"{path.name} says that its edges follow great circles; they are taken as straight "
+                "in degrees, which shows where edges are long."
+            )
+        else:
+            warnings.warn_explicit(each.message, each.category, each.filename, each.lineno)
+    return frame.rename_geometry("geometry") if frame.geometry.name != "geometry" else frame
+
+
+def _one_line(problem: Exception) -> str:
+    return " ".join(str(problem).split())
+
+
+def _in_degrees(frame: Any, path: Path, notes: list[str]) -> Any:
+    """The table in longitude and latitude of WGS 84."""
     if frame.crs is None:
-        if np.abs(frame.total_bounds).max() > 360:
+        if np.nanmax(np.abs(frame.total_bounds), initial=0.0) > 360:
             raise InputDataError(
                 f"Region file {path} states no coordinate reference system and is not in degrees; "
                 "save it with one."
@@ -91,57 +125,43 @@ def _named(frame: Any, path: Path, name: str | None, notes: list[str]) -> Region
         raise InputDataError(
             f"Region file {path} cannot be brought to WGS 84: {problem}."
         ) from None
-    if np.abs(frame.bounds[["miny", "maxy"]].to_numpy()).max(initial=0.0) > 90 + 1e-6:
+    # Rows without a geometry have no bounds.
+    if np.nanmax(np.abs(frame.bounds[["miny", "maxy"]].to_numpy()), initial=0.0) > 90 + 1e-6:
         raise InputDataError(
             f"Region file {path} has latitudes beyond the poles; check its coordinate reference "
             "system and the order of its axes."
         )
-    names = _names(frame, path, name)
+    return frame
+
+
+def _named(frame: Any, path: Path, name: str | None, notes: list[str]) -> Regions:
+    """The regions of a table in degrees."""
     collected: dict[str, list[BaseGeometry]] = {}
-    for label, geometry in zip(names, frame.geometry, strict=True):
-        shape = usable(geometry)
-        if shape.is_empty:
-            notes.append(f"{label} in {path.name} has no area.")
-        collected.setdefault(label, []).append(shape)
-    if all(part.is_empty for parts in collected.values() for part in parts):
+    empty, crossed, mended = [], [], []
+    for label, geometry in zip(_names(frame, path, name), frame.geometry, strict=True):
+        found = usable(geometry)
+        empty += [label] * found.shape.is_empty
+        crossed += [label] * found.crossed
+        mended += [label] * (found.mended and not found.shape.is_empty)
+        collected.setdefault(label, []).append(found.shape)
+    if len(empty) == len(frame):
         raise InputDataError(f"Region file {path} holds no polygons.")
+    for labels, said in (
+        (empty, "No area is drawn in {file} for {names}."),
+        (crossed, "Edges of more than 180° in {file} are read as crossing 180° in {names}."),
+        (mended, "Outlines that cross themselves in {file} are mended in {names}."),
+    ):
+        if labels:
+            notes.append(said.format(file=path.name, names=_listed(labels)))
     merged = tuple(shapely.union_all(parts) for parts in collected.values())
     return Regions(tuple(collected), merged, tuple(notes))
 
 
-def _of_codes(path: Path, codes: Mapping[str, str]) -> Regions:
-    """Regions along the edges of a raster's cells, one for each whole number but 0 and nodata."""
-    try:
-        with rasterio.open(path) as file:
-            values, crs, affine = file.read(1, masked=True), file.crs, file.transform
-    except rasterio.errors.RasterioIOError as problem:
-        raise InputDataError(f"Region file {path} cannot be read ({problem}).") from None
-    if crs is None or not crs.is_geographic or affine.b or affine.d or affine.e >= 0:
-        raise InputDataError(
-            f"Region file {path} is not a north-up raster in degrees; bring it to EPSG:4326."
-        )
-    whole = np.ma.filled(values, 0)
-    if not np.array_equal(whole, np.round(np.nan_to_num(whole))):
-        raise InputDataError(
-            f"Region file {path} holds other than whole numbers; give a raster of codes."
-        )
-    found, numbers = np.unique(whole, return_inverse=True)
-    if len(found) > MOST_CODES:
-        raise InputDataError(
-            f"Region file {path} holds {len(found)} different codes; give a raster of regions."
-        )
-    grid = Grid(affine.c, affine.f, affine.a, -affine.e, *values.shape)
-    ranks = numbers.reshape(values.shape).astype(np.int32) + 1
-    outlines = traced(np.where(whole == 0, 0, ranks).astype(np.int32), grid)
-    known = {str(int(found[rank - 1])): shape for rank, shape in sorted(outlines.items())}
-    unused = [f"{path.name} has no cell of code {code}." for code in codes if code not in known]
-    if not known:
-        raise InputDataError(f"Region file {path} holds no code but 0 and nodata.")
-    collected: dict[str, list[BaseGeometry]] = {}
-    for code, outline in known.items():
-        collected.setdefault(codes.get(code, f"region {code}"), []).append(outline)
-    merged = tuple(shapely.union_all(parts) for parts in collected.values())
-    return Regions(tuple(collected), merged, tuple(unused))
+def _listed(labels: Sequence[str]) -> str:
+    """The first few labels, and how many there are besides."""
+    first = ", ".join(labels[:MOST_NAMED])
+    more = len(labels) - MOST_NAMED
+    return f"{first} and {more} more" if more > 0 else first
 
 
 def _names(frame: Any, path: Path, name: str | None) -> list[str]:
