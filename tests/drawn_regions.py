@@ -22,15 +22,17 @@ GEOD = Geod(ellps="WGS84")
 Ring = list[tuple[float, float]]
 
 
-def geodesic_area(ring: Ring, *holes: Ring, once_round: bool = False) -> float:
+def geodesic_area(ring: Ring, *holes: Ring, once_round: bool = False, pieces: int = 5000) -> float:
     """A ring minus its holes, each followed in short pieces by geodesics, m2.
+
+    A piece is the ring's extent over ``pieces``.
 
     A ring that goes ``once_round`` the globe has no edge back; it closes one turn further on.
     """
     end = (ring[0][0] + 360.0, ring[0][1]) if once_round else ring[0]
     line = shapely.LineString([*ring, end])
     west, south, east, north = line.bounds
-    piece = max(east - west, north - south) / 5000
+    piece = max(east - west, north - south) / pieces
     longitude, latitude = shapely.get_coordinates(shapely.segmentize(line, piece)).T
     area = abs(float(GEOD.polygon_area_perimeter(longitude[:-1], latitude[:-1])[0]))
     return area - sum(geodesic_area(hole) for hole in holes)

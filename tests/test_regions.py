@@ -15,6 +15,7 @@ from shapely import MultiPolygon, Polygon, box
 from gridcool.grid import Bounds, Grid, grid_from_bounds
 from gridcool.planning.region_files import read_regions
 from gridcool.planning.regions import (
+    Cover,
     Regions,
     box_regions,
     coverage,
@@ -125,6 +126,66 @@ def test_ring_round_a_pole(pole: int, tmp_path: Path) -> None:
     rows = set((cover.cells // 360).tolist())
     assert (0 if pole > 0 else 179) in rows
     assert not rows & set(range(60, 120))
+
+
+#: Two regions across 180° and one round a pole, with coasts that are neither meridians nor
+#: parallels, each as one continuous ring; the last goes once round.
+FAR = [(171.3, 62.1), (189.7, 60.4), (196.2, 66.9), (183.4, 71.2), (174.9, 68.8)]
+NEAR = [(176.2, -20.3), (179.1, -15.4), (184.6, -12.9), (186.3, -17.7), (181.2, -21.8)]
+ROUND = [(x, -68.0 + 4 * math.sin(math.radians(2 * x)) + (x % 7)) for x in range(-175, 180, 5)]
+BAR = 1e-3
+SPHERE = 4 * math.pi * 6_378_137.0**2  # of the equatorial radius, which is common, m2
+
+
+def test_areas_and_coverage_agree_with_geodesics(tmp_path: Path) -> None:
+    """Whole regions, and what is given to a wrong cell, against geodesics in short pieces."""
+    rings = {"far": FAR, "near": NEAR, "round": ROUND}
+    drawn = [[[((x + 180) % 360 - 180, y) for x, y in ring]] for ring in rings.values()]
+    regions = read_regions(geojson(tmp_path / "r.geojson", *drawn), None)
+    grid = grid_from_bounds(GLOBE, 1.0)
+    worst = {"region": 0.0, "covered": 0.0, "misplaced": 0.0}
+    for ring, cover in zip(rings.values(), coverage(regions, grid), strict=True):
+        exact = geodesic_area(ring, once_round=ring is ROUND)
+        misplaced = np.abs(in_cells(ring, grid) - spread(cover, grid)).sum() / 2
+        worst["region"] = max(worst["region"], abs(cover.area / exact - 1))
+        worst["covered"] = max(worst["covered"], abs(cover.areas.sum() / exact - 1))
+        worst["misplaced"] = max(worst["misplaced"], misplaced / exact)
+    print({what: f"{error:.1e}" for what, error in worst.items()})
+    assert worst["region"] < 2e-6
+    assert worst["covered"] < 2e-6
+    assert worst["misplaced"] < BAR
+    assert SPHERE / (grid.row_areas().sum() * grid.columns) - 1 > BAR
+
+
+def spread(cover: Cover, grid: Grid) -> np.ndarray:
+    found = np.zeros(grid.rows * grid.columns)
+    found[cover.cells] = cover.areas
+    return found
+
+
+def in_cells(ring: Ring, grid: Grid) -> np.ndarray:
+    """Area of a region in each cell, by cutting the region with every cell."""
+    if ring is ROUND:
+        shape = Polygon([*ring, (185, ring[0][1]), (185, -90), (-175, -90)])
+    else:
+        shape = Polygon(ring)
+    west, south, east, north = shape.bounds
+    x, y = np.meshgrid(
+        np.arange(math.floor(west), math.ceil(east)), np.arange(math.floor(south), math.ceil(north))
+    )
+    parts = shapely.intersection(shape, shapely.box(x, y, x + 1, y + 1))
+    found = np.zeros(grid.shape)
+    for left, low, part in zip(x.ravel(), y.ravel(), parts.ravel(), strict=True):
+        row, column = 89 - low, (left + 180) % 360
+        if part.area == 1:
+            found[row, column] += grid.row_areas()[row]
+        elif part.area > 0:
+            pieces = getattr(part, "geoms", [part])
+            found[row, column] += sum(
+                geodesic_area(shapely.get_coordinates(each.exterior).tolist()[:-1], pieces=100)
+                for each in pieces
+            )
+    return found.ravel()
 
 
 def test_pole_drawn_along_the_edge_of_the_map(tmp_path: Path) -> None:
