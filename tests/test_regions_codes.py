@@ -103,6 +103,12 @@ def test_a_step_in_single_precision_still_closes_the_circle(tmp_path: Path) -> N
     assert shape.bounds[::2] == pytest.approx((-90.9, -89.1))
 
 
+def test_a_hair_west_of_180_is_180(tmp_path: Path) -> None:
+    west = float(np.nextafter(-180.0, -181.0))
+    path = stored(tmp_path / "codes.tif", np.ones((1, 360), np.uint8), Affine(1, 0, west, 0, -1, 9))
+    assert read_regions(path, None).geometries[0].bounds == (-180, 8, 180, 9)
+
+
 def test_what_is_taken_for_granted_is_said(tmp_path: Path) -> None:
     bands = np.array([[[1, 2]], [[3, 4]]], np.uint8)
     path = stored(tmp_path / "codes.tif", bands, crs="EPSG:4267")

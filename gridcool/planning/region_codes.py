@@ -82,7 +82,8 @@ def _grid(file: Any, path: Path) -> Grid:
     step, rows, columns = affine.a, file.height, file.width
     if abs(step * columns - 360) < NEARLY * step:
         step = 360 / columns
-    grid = Grid((affine.c + 180) % 360 - 180, affine.f, step, -affine.e, rows, columns)
+    west = (round(affine.c, 9) + 180) % 360 - 180  # rounded: 180°W by a hair is not 180°E
+    grid = Grid(west, affine.f, step, -affine.e, rows, columns)
     south = affine.f + affine.e * rows
     # A row may be centred on a pole; the half of it that lies beyond is not there.
     beyond = max(affine.f - 90, -90 - south) > (0.5 + NEARLY) * grid.latitude_step
