@@ -137,13 +137,16 @@ def planning_layers(layers: xr.Dataset, inputs: xr.Dataset, settings: Settings) 
     SettingsError
         If a rule or criterion names neither an input nor a layer.
     """
-    exclusion = exclusion_layer(layers, inputs, rules_of(settings))
+    criteria = criteria_of(settings)
+    exclusion = exclusion_layer(
+        layers, inputs, rules_of(settings), needed=[each.layer for each in criteria]
+    )
     found = {"exclusion": exclusion}
     if settings.criterion:
         both = suitability(
             layers,
             inputs,
-            criteria_of(settings),
+            criteria,
             exclusion=exclusion,
             mean=settings.suitability.mean,
         )

@@ -31,6 +31,11 @@ def test_bits_by_hand() -> None:
     assert excluded(both) == [[2, 0, 1 + 2], [0, 0, 0]]
 
 
+def test_a_cell_without_a_needed_layer_cannot_be_judged() -> None:
+    found = exclusion_layer(LAYERS, INPUTS, [], needed=["slope"])
+    assert found.values.tolist() == [[0, 0, 1], [0, 0, 1]]
+
+
 def test_missing_values_are_kept_or_not_as_told() -> None:
     assert excluded(ExclusionRule("slope", "steep", above=15))[1][2] == 0
     assert excluded(ExclusionRule("slope", "steep", above=15, missing="out"))[1][2] == 2

@@ -112,13 +112,15 @@ def test_exclusions_and_why() -> None:
     assert frame.loc["north", "rejected_flux_mean"] == pytest.approx(100.0)
     assert frame.loc["north", "main_exclusion"] == "too steep"  # 3 km2, no result 2
     assert frame.loc["middle", "main_exclusion"] == "too steep"
-    assert frame.loc["void", "main_exclusion"] == "nothing is known of the flux here"
+    assert (
+        frame.loc["void", "main_exclusion"] == "no flux, or no value of a criterion, is known here"
+    )
     assert frame["rank"].fillna(-1).tolist() == [1, -1, -1]
     losses = exclusion_losses(exclusion, [NORTH, MIDDLE], FLAGS).to_dict("records")
     assert losses == [
         {
             "region": "north",
-            "reason": "nothing is known of the flux here",
+            "reason": "no flux, or no value of a criterion, is known here",
             "area_km2": 2.0,
             "only_km2": 2.0,
         },

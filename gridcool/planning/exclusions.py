@@ -15,7 +15,7 @@ from gridcool.errors import SettingsError
 from gridcool.physics.sun import month_weights
 from gridcool.variables import Flag
 
-NO_RESULT = Flag(1, "no_result", "nothing is known of the flux here")
+NO_RESULT = Flag(1, "no_result", "no flux, or no value of a criterion, is known here")
 MOST_RULES = 15  # with the bit above, what sixteen bits hold
 
 
@@ -67,7 +67,10 @@ def exclusion_flags(rules: Sequence[ExclusionRule]) -> tuple[Flag, ...]:
 
 
 def exclusion_layer(
-    layers: xr.Dataset, inputs: xr.Dataset, rules: Sequence[ExclusionRule]
+    layers: xr.Dataset,
+    inputs: xr.Dataset,
+    rules: Sequence[ExclusionRule],
+    needed: Sequence[str] = (),
 ) -> xr.DataArray:
     """Why each cell is out, lazily; 0 where it is eligible.
 
@@ -76,6 +79,8 @@ def exclusion_layer(
     layers, inputs : xarray.Dataset
         On the same grid; a name is looked up among the layers first.
     rules : sequence of ExclusionRule
+    needed : sequence of str
+        Layers, besides the flux, without which a cell cannot be judged.
 
     Returns
     -------
@@ -88,9 +93,13 @@ def exclusion_layer(
         If a rule names a layer that is neither.
     """
     flags = exclusion_flags(rules)
-    out = layers["rejected_flux"].isnull().astype(np.uint16) * np.uint16(NO_RESULT.value)
+    among = {"layers": layers, "inputs": inputs}
+    unknown = layers["rejected_flux"].isnull()
+    for name in needed:
+        unknown = unknown | annual_field(name, among, "[[criterion]]").isnull()
+    out = unknown.astype(np.uint16) * np.uint16(NO_RESULT.value)
     for rule, flag in zip(rules, flags[1:], strict=True):
-        values = annual_field(rule.layer, {"layers": layers, "inputs": inputs}, "[[exclude]]")
+        values = annual_field(rule.layer, among, "[[exclude]]")
         out = out | (_met(values, rule).astype(np.uint16) * np.uint16(flag.value))
     return out.astype(np.uint16).rename("exclusion")
 

@@ -8,7 +8,6 @@ from pathlib import Path
 from typing import Any
 
 import geopandas
-import numpy as np
 import pandas as pd
 import pyogrio
 import shapely
@@ -92,5 +91,5 @@ def _multi(shape: Any) -> Any:
 
 def in_order(names: Sequence[str], shapes: Sequence[Any], frame: pd.DataFrame) -> list[Any]:
     """The shapes of the frame's regions, in its order."""
-    known = dict(zip(names, np.arange(len(names)), strict=True))
-    return [shapes[known[str(region)]] for region in frame["region"]]
+    known = dict(zip(names, shapes, strict=True))
+    return [known[str(region)] for region in frame["region"]]

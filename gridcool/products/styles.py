@@ -1,0 +1,200 @@
+"""OGC Styled Layer Descriptors (SLD 1.0.0) for the layers and the polygons."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from xml.etree import ElementTree as ET
+
+import numpy as np
+import rasterio
+from numpy.typing import NDArray
+
+from gridcool.products.failure import output_errors
+from gridcool.products.geotiff import LAYER_FOLDER
+from gridcool.products.ramps import MISSING, SPANS, Colour, class_colours, ramp
+from gridcool.variables import LayerVariable
+
+FloatArray = NDArray[np.floating]
+
+STYLE_FOLDER = "styles"
+SLD = "http://www.opengis.net/sld"
+OGC = "http://www.opengis.net/ogc"
+STEPS = 9
+CLASSES_OF_POLYGONS = 5
+OUTLINE: Colour = (34, 34, 34)
+
+
+def write_styles(product: Path, layers: Mapping[str, LayerVariable]) -> list[Path]:
+    """A style for each layer of a product, from its own statistics.
+
+    Parameters
+    ----------
+    product : Path
+        A folder that `write_layers` filled.
+    layers : mapping of LayerVariable
+        As declared for this product.
+
+    Returns
+    -------
+    list of Path
+        ``styles/<layer>.sld``
+
+    Raises
+    ------
+    OutputError
+        If a file cannot be written.
+    """
+    folder = _folder(product)
+    written = []
+    for name, layer in layers.items():
+        path = folder / f"{name}.sld"
+        _write(_raster_style(layer, *_span(product, layer)), path)
+        written.append(path)
+    return written
+
+
+def write_polygon_style(
+    product: Path, name: str, column: str, unit: str, values: FloatArray, ramp_name: str
+) -> Path:
+    """A style of polygons in classes of one attribute, in equal steps of its range.
+
+    Parameters
+    ----------
+    product : Path
+    name : str
+        Of the table and the file, such as "regions".
+    column, unit : str
+    values : array
+        Of the attribute; NaN is drawn grey.
+    ramp_name : str
+    """
+    known = np.asarray(values, float)
+    known = known[np.isfinite(known)]
+    low, high = (float(known.min()), float(known.max())) if known.size else (0.0, 1.0)
+    root, rules = _named(name, f"{column} ({unit})")
+    edges = np.linspace(low, high, CLASSES_OF_POLYGONS + 1)
+    for number, colour in enumerate(ramp(ramp_name).colours(CLASSES_OF_POLYGONS)):
+        last = number == CLASSES_OF_POLYGONS - 1
+        rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
+        label = f"{edges[number]:.4g} to {edges[number + 1]:.4g} {unit}".rstrip()
+        ET.SubElement(rule, f"{{{SLD}}}Name").text = label
+        both = ET.SubElement(ET.SubElement(rule, f"{{{OGC}}}Filter"), f"{{{OGC}}}And")
+        _compare(both, "PropertyIsGreaterThanOrEqualTo", column, edges[number])
+        kind = "PropertyIsLessThanOrEqualTo" if last else "PropertyIsLessThan"
+        _compare(both, kind, column, edges[number + 1])
+        _fill(rule, colour)
+    rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
+    ET.SubElement(rule, f"{{{SLD}}}Name").text = "nothing eligible"
+    null = ET.SubElement(ET.SubElement(rule, f"{{{OGC}}}Filter"), f"{{{OGC}}}PropertyIsNull")
+    ET.SubElement(null, f"{{{OGC}}}PropertyName").text = column
+    _fill(rule, MISSING)
+    path = _folder(product) / f"{name}.sld"
+    _write(root, path)
+    return path
+
+
+def _raster_style(layer: LayerVariable, low: float, high: float) -> ET.Element:
+    root, rules = _named(layer.name, layer.long_name)
+    rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
+    symbolizer = ET.SubElement(rule, f"{{{SLD}}}RasterSymbolizer")
+    ET.SubElement(symbolizer, f"{{{SLD}}}Opacity").text = "1"
+    channel = ET.SubElement(symbolizer, f"{{{SLD}}}ChannelSelection")
+    grey = ET.SubElement(channel, f"{{{SLD}}}GrayChannel")
+    ET.SubElement(grey, f"{{{SLD}}}SourceChannelName").text = "1"
+    colours = ET.SubElement(symbolizer, f"{{{SLD}}}ColorMap")
+    if layer.is_whole:
+        colours.set("type", "values")
+        for value, label, colour in _named_values(layer):
+            _entry(colours, value, label, colour)
+        return root
+    colours.set("type", "ramp")
+    unit = "" if layer.units == "1" else f" {layer.units}"
+    values = np.linspace(low, high, STEPS)
+    for value, colour in zip(values, ramp(layer.ramp).colours(STEPS), strict=True):
+        _entry(colours, float(value), f"{value:.3g}{unit}", colour)
+    return root
+
+
+def _named_values(layer: LayerVariable) -> list[tuple[float, str, Colour]]:
+    """Values of a layer of whole numbers with their meaning: classes, or single bits."""
+    if layer.classes:
+        colours = [MISSING, *class_colours(len(layer.classes) - 1)]
+        return [
+            (each.value, each.description, colour)
+            for each, colour in zip(layer.classes, colours, strict=True)
+        ]
+    colours = ramp("irradiance").colours(len(layer.flags) + 2)[1:-1]
+    single = [
+        (float(flag.value), flag.description, colour)
+        for flag, colour in zip(layer.flags, colours, strict=True)
+    ]
+    return [(0.0, "nothing to report", (250, 250, 245)), *single]
+
+
+def _span(product: Path, layer: LayerVariable) -> tuple[float, float]:
+    """Ends of the ramp: fixed for directions and shares, else the layer's own range."""
+    if layer.ramp in SPANS:
+        return SPANS[layer.ramp]
+    with rasterio.open(product / LAYER_FOLDER / f"{layer.name}.tif") as file:
+        tags = [file.tags(band) for band in file.indexes]
+    known = [tag for tag in tags if "STATISTICS_MINIMUM" in tag]
+    if not known:
+        return 0.0, 1.0
+    low = min(float(tag["STATISTICS_MINIMUM"]) for tag in known)
+    high = max(float(tag["STATISTICS_MAXIMUM"]) for tag in known)
+    return (low, high) if high > low else (low - 0.5, low + 0.5)
+
+
+def _named(name: str, title: str) -> tuple[ET.Element, ET.Element]:
+    """The frame of a descriptor, and where its rules go."""
+    root = ET.Element(f"{{{SLD}}}StyledLayerDescriptor", {"version": "1.0.0"})
+    layer = ET.SubElement(root, f"{{{SLD}}}NamedLayer")
+    ET.SubElement(layer, f"{{{SLD}}}Name").text = name
+    style = ET.SubElement(layer, f"{{{SLD}}}UserStyle")
+    ET.SubElement(style, f"{{{SLD}}}Name").text = name
+    ET.SubElement(style, f"{{{SLD}}}Title").text = title
+    return root, ET.SubElement(style, f"{{{SLD}}}FeatureTypeStyle")
+
+
+def _entry(parent: ET.Element, value: float, label: str, colour: Colour) -> None:
+    attributes = {"color": _hex(colour), "quantity": repr(float(value)), "label": label}
+    ET.SubElement(parent, f"{{{SLD}}}ColorMapEntry", attributes)
+
+
+def _compare(parent: ET.Element, kind: str, column: str, value: float) -> None:
+    element = ET.SubElement(parent, f"{{{OGC}}}{kind}")
+    ET.SubElement(element, f"{{{OGC}}}PropertyName").text = column
+    ET.SubElement(element, f"{{{OGC}}}Literal").text = repr(float(value))
+
+
+def _fill(rule: ET.Element, colour: Colour) -> None:
+    symbolizer = ET.SubElement(rule, f"{{{SLD}}}PolygonSymbolizer")
+    fill = ET.SubElement(symbolizer, f"{{{SLD}}}Fill")
+    _parameters(fill, {"fill": _hex(colour), "fill-opacity": "0.85"})
+    stroke = ET.SubElement(symbolizer, f"{{{SLD}}}Stroke")
+    _parameters(stroke, {"stroke": _hex(OUTLINE), "stroke-width": "0.6"})
+
+
+def _parameters(parent: ET.Element, values: Mapping[str, str]) -> None:
+    for name, text in values.items():
+        ET.SubElement(parent, f"{{{SLD}}}CssParameter", {"name": name}).text = text
+
+
+def _folder(product: Path) -> Path:
+    folder = product / STYLE_FOLDER
+    with output_errors(folder):
+        folder.mkdir(exist_ok=True)
+    return folder
+
+
+def _write(root: ET.Element, path: Path) -> None:
+    ET.register_namespace("", SLD)
+    ET.register_namespace("ogc", OGC)
+    ET.indent(root)
+    with output_errors(path):
+        ET.ElementTree(root).write(path, encoding="utf-8", xml_declaration=True)
+
+
+def _hex(colour: Sequence[int]) -> str:
+    return "#{:02x}{:02x}{:02x}".format(*colour)

@@ -1,0 +1,134 @@
+"""Maps: that they show the layer, its unit, its place and what is left out."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import matplotlib.image
+import numpy as np
+import pytest
+import shapely
+import xarray as xr
+from invented_layers import ATTRIBUTES
+
+from gridcool.grid import Bounds, Grid
+from gridcool.products import maps
+from gridcool.products.cartography import Surroundings, coastline, projection
+from gridcool.products.layers import write_layers
+from gridcool.products.maps import draw_maps
+from gridcool.products.ramps import MISSING, ramp
+from gridcool.variables import Flag, layer_variables
+
+COUNTRY = Grid(100.0, 22.0, 0.1, 0.1, 60, 50)
+GLOBE = Grid(-180.0, 90.0, 2.0, 2.0, 90, 180)
+LAYERS = {
+    "rejected_flux": layer_variables()["rejected_flux"],
+    "exclusion": replace(
+        layer_variables()["exclusion"],
+        flags=(Flag(1, "no_result", "unknown"), Flag(2, "steep", "too steep")),
+    ),
+}
+
+
+def product(folder: Path, grid: Grid) -> Path:
+    """Flux that falls from west to east; the north is steep, a corner unknown."""
+    rows, columns = np.indices(grid.shape)
+    flux = np.linspace(150, 50, grid.columns)[columns].astype(np.float32)
+    flux[-10:, -10:] = np.nan
+    exclusion = np.where(rows < grid.rows // 3, 2, 0) + np.isnan(flux)
+    dataset = xr.Dataset(
+        {
+            "rejected_flux": (("latitude", "longitude"), flux),
+            "exclusion": (("latitude", "longitude"), exclusion.astype(np.uint16)),
+        },
+        coords={"latitude": grid.latitudes, "longitude": grid.longitudes},
+    )
+    write_layers(dataset, grid, folder, attributes=ATTRIBUTES, declared=LAYERS)
+    return folder
+
+
+def colours(path: Path) -> np.ndarray:
+    return np.round(255 * matplotlib.image.imread(path)[..., :3]).astype(int)
+
+
+def share(picture: np.ndarray, colour: tuple[int, int, int]) -> float:
+    return float((np.abs(picture - np.array(colour)).max(axis=-1) <= 2).mean())
+
+
+@pytest.mark.parametrize("grid", [COUNTRY, GLOBE], ids=["country", "globe"])
+def test_maps_show_their_layers(tmp_path: Path, grid: Grid) -> None:
+    outlines = [shapely.box(101, 17, 103, 19), shapely.Polygon()]
+    around = Surroundings(outlines, [("1", 102.0, 18.0)])
+    flux, why = draw_maps(product(tmp_path, grid), grid, LAYERS, around)
+    assert [each.path.name for each in (flux, why)] == ["rejected_flux.png", "exclusion.png"]
+    picture = colours(flux.path)
+    ends = ramp("flux").colours(maps.RAMP_STEPS)
+    assert share(picture, ends[0]) > 0.0005
+    assert share(picture, ends[-1]) > 0.0005
+    assert share(picture, MISSING) > 0.0005
+    assert "Hatched" in flux.caption
+    assert "W m-2" in flux.caption
+    told = colours(why.path)
+    assert share(told, (250, 250, 245)) > 0.1  # what is eligible
+    assert len(np.unique(told.reshape(-1, 3), axis=0)) > 20
+
+
+def test_legends_have_units(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    texts: list[str] = []
+    saved = maps.Figure.savefig
+
+    def watch(self: Any, *arguments: Any, **options: Any) -> None:
+        for axes in self.axes:
+            texts.extend([axes.get_xlabel(), axes.get_title(loc="left")])
+            texts.extend(each.get_text() for each in axes.texts)
+            legend = axes.get_legend()
+            texts.extend(each.get_text() for each in (legend.get_texts() if legend else ()))
+        for legend in self.legends:
+            texts.extend(each.get_text() for each in legend.get_texts())
+        saved(self, *arguments, **options)
+
+    monkeypatch.setattr(maps.Figure, "savefig", watch)
+    draw_maps(product(tmp_path, COUNTRY), COUNTRY, LAYERS, Surroundings())
+    assert "rejected flux (W m⁻²)" in texts
+    assert "left out by a rule" in texts
+    assert "Too steep" in texts
+    assert "100 km" in texts  # about a quarter of 530 km
+    assert any(text.startswith("Shortwave leaving the atmosphere") for text in texts)
+
+
+def test_the_same_picture_every_time(tmp_path: Path) -> None:
+    folder = product(tmp_path, COUNTRY)
+    first = draw_maps(folder, COUNTRY, LAYERS, Surroundings())[0].path.read_bytes()
+    assert draw_maps(folder, COUNTRY, LAYERS, Surroundings())[0].path.read_bytes() == first
+
+
+def test_projections_suit_the_place() -> None:
+    assert type(projection(Bounds(-180, -90, 180, 90))).__name__ == "EqualEarth"
+    local = projection(Bounds(170, 10, 190, 20))
+    assert type(local).__name__ == "LambertAzimuthalEqualArea"
+    assert local.proj4_params["lon_0"] == 180
+    assert local.proj4_params["lat_0"] == 15
+
+
+def test_the_coast_is_at_hand_offline() -> None:
+    lines = coastline()
+    assert len(lines) > 1000
+    # A point on the west coast of Africa, at the equator, from memory: 9.4 to 9.9° E.
+    nearest = shapely.distance(shapely.union_all(lines), shapely.Point(9.6, 0.5))
+    assert nearest < 0.5
+    inland = shapely.distance(shapely.union_all(lines), shapely.Point(22, 5))
+    assert inland > 5
+
+
+def test_coasts_past_the_antimeridian(tmp_path: Path) -> None:
+    across = Grid(170.0, -10.0, 0.5, 0.5, 40, 50)  # to 195° E
+    pictures = draw_maps(product(tmp_path, across), across, LAYERS, Surroundings())
+    assert pictures[0].path.stat().st_size > 10_000
+
+
+def test_a_layer_that_is_not_there(tmp_path: Path) -> None:
+    folder = product(tmp_path, COUNTRY)
+    with pytest.raises(ValueError, match="not among"):
+        draw_maps(folder, COUNTRY, {"tilt": layer_variables()["tilt"]}, Surroundings())

@@ -1,0 +1,81 @@
+"""Styles: valid descriptors with the layer's own range, unit and colours."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from xml.etree import ElementTree as ET
+
+import numpy as np
+import pytest
+from invented_layers import ATTRIBUTES, GRIDS, invented_layers
+
+from gridcool.products.layers import write_layers
+from gridcool.products.ramps import ramp
+from gridcool.products.styles import OGC, SLD, write_polygon_style, write_styles
+from gridcool.variables import layer_variables
+
+NAMES = {"s": SLD, "o": OGC}
+
+
+@pytest.fixture(scope="module")
+def product(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    folder = tmp_path_factory.mktemp("styles")
+    write_layers(
+        invented_layers(GRIDS["antimeridian"]), GRIDS["antimeridian"], folder, attributes=ATTRIBUTES
+    )
+    return folder
+
+
+def entries(path: Path) -> list[dict[str, str]]:
+    root = ET.parse(path).getroot()
+    assert root.tag == f"{{{SLD}}}StyledLayerDescriptor"
+    assert root.get("version") == "1.0.0"
+    return [dict(each.attrib) for each in root.iterfind(".//s:ColorMapEntry", NAMES)]
+
+
+def test_every_layer_has_a_style(product: Path) -> None:
+    written = write_styles(product, layer_variables())
+    assert [path.stem for path in written] == list(layer_variables())
+    for path in written:
+        found = entries(path)
+        quantities = [float(each["quantity"]) for each in found]
+        assert quantities == sorted(quantities)
+        assert len(found) == len({each["label"] for each in found}) or len(found) > 8
+
+
+def test_ramps_span_the_values_with_their_unit(product: Path) -> None:
+    write_styles(product, layer_variables())
+    found = entries(product / "styles" / "rejected_flux.sld")
+    assert len(found) == 9
+    assert found[0]["label"].endswith(" W m-2")
+    first, last = ramp("flux").colours(9)[0], ramp("flux").colours(9)[-1]
+    assert found[0]["color"] == "#{:02x}{:02x}{:02x}".format(*first)
+    assert found[-1]["color"] == "#{:02x}{:02x}{:02x}".format(*last)
+    assert 30 < float(found[0]["quantity"]) < 100 < float(found[-1]["quantity"]) < 170
+    compass = entries(product / "styles" / "azimuth.sld")
+    assert (float(compass[0]["quantity"]), float(compass[-1]["quantity"])) == (0.0, 360.0)
+    assert compass[0]["color"] == compass[-1]["color"]
+
+
+def test_flags_and_classes_have_names(product: Path) -> None:
+    write_styles(product, layer_variables())
+    flags = entries(product / "styles" / "input_quality.sld")
+    assert flags[0]["label"] == "nothing to report"
+    assert float(flags[3]["quantity"]) == 4.0
+    assert "blend" in flags[3]["label"]
+
+
+def test_polygons_by_an_attribute(product: Path) -> None:
+    values = np.array([0.0, 10.0, np.nan, 4.0])
+    path = write_polygon_style(product, "regions", "rejected_flux_mean", "W m-2", values, "flux")
+    root = ET.parse(path).getroot()
+    rules = root.findall(".//s:Rule", NAMES)
+    assert [rule.find("s:Name", NAMES).text for rule in rules] == [  # type: ignore[union-attr]
+        *("0 to 2 W m-2", "2 to 4 W m-2", "4 to 6 W m-2", "6 to 8 W m-2", "8 to 10 W m-2"),
+        "nothing eligible",
+    ]
+    names = {each.text for each in root.iterfind(".//o:PropertyName", NAMES)}
+    assert names == {"rejected_flux_mean"}
+    assert root.find(".//o:PropertyIsNull", NAMES) is not None
+    nothing = write_polygon_style(product, "zones", "x", "", np.array([np.nan]), "flux")
+    assert nothing.exists()
