@@ -167,7 +167,7 @@ def _even_spacing(centres: NDArray[np.float64], what: str, full: float) -> tuple
         step = full / len(centres)
     else:
         per_degree = Fraction(1 / step).limit_denominator(12)
-        if abs(float(1 / per_degree) - step) * len(centres) < 2e-5:
+        if per_degree and abs(float(1 / per_degree) - step) * len(centres) < 2e-5:
             step = float(1 / per_degree)
     return float(step), float(centres[0])
 

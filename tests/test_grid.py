@@ -187,3 +187,11 @@ def test_a_grid_comes_back_from_its_own_centres(grid: Grid, single: bool) -> Non
 def test_flattening_is_that_of_wgs84() -> None:
     geod = Geod(ellps="WGS84")
     assert (geod.a, geod.f) == (SEMI_MAJOR_AXIS, FLATTENING)
+
+
+@pytest.mark.parametrize("step", [24.5, 30.0, 45.0, 50.0, 80.0])
+def test_steps_of_many_degrees(step: float) -> None:
+    """Coarser than any fraction of a degree that a step is snapped to."""
+    grid = grid_from_centres(np.array([step / 2, -step / 2]), np.array([10.0, 10.0 + step]))
+    assert (grid.longitude_step, grid.latitude_step) == (step, step)
+    assert grid.bounds == Bounds(10 - step / 2, -step, 10 + 1.5 * step, step)
