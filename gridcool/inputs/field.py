@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from functools import partial
+from pathlib import Path
 
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
 from gridcool.errors import InputDataError
-from gridcool.inputs.axes import Axis, latitude_axis, longitude_axis
+from gridcool.inputs.axes import JITTER, SINGLE, Axis, latitude_axis, longitude_axis
 from gridcool.inputs.calendar import Steps, annual, read_steps
 from gridcool.inputs.conventions import Layout, find_layout
 from gridcool.inputs.hours import Hours, read_hours
@@ -138,18 +139,60 @@ def open_field(spec: InputSpec) -> Field:
     if not spec.is_ratio:
         return field
     path = spec.divisor_path or spec.path
-    below_spec = InputSpec(spec.name, path, spec.divisor_variable, divisor_variable="")
+    below_spec = InputSpec(
+        spec.name, path, spec.divisor_variable, hours=spec.hours, divisor_variable=""
+    )
     below = _open(below_spec, None, spec.divisor_variable)
     with located(field.label):
-        if len(field.latitude) != len(below.latitude) or len(field.longitude) != len(
-            below.longitude
-        ):
-            raise InputDataError(f"its divisor in {path} is on another grid; name one on the same.")
+        _refuse_other_cells(field, below, path)
         units = [f.opened.dataset[f.layout.name].attrs.get("units") for f in (field, below)]
         factor = ratio_conversion(*units)
     text = f"ratio of {field.layout.name} and {below.layout.name}"
     ratio = Conversion(text, known.units if known else "1", factor)
-    return replace(field, conversion=ratio, divisor=below)
+    steps = replace(field.steps, warnings=(*field.steps.warnings, *_other_years(field, below)))
+    return replace(field, steps=steps, conversion=ratio, divisor=below)
+
+
+def _refuse_other_cells(field: Field, below: Field, path: Path) -> None:
+    """A ratio is of one cell and month: the divisor must have the same."""
+    pairs = {
+        "latitudes": (field.latitude, below.latitude),
+        "longitudes": (field.longitude, below.longitude),
+    }
+    for what, (one, other) in pairs.items():
+        same = len(one) == len(other)
+        if not same or np.abs(one.centres - other.centres).max() > JITTER * one.step + SINGLE:
+            raise InputDataError(
+                f"its divisor in {path} has the {what} {_span(other)} instead of {_span(one)}; "
+                "name one on the same grid."
+            )
+    if field.months != below.months:
+        has, needed = ("one field", "12 months") if field.months == 12 else ("months", "one field")
+        raise InputDataError(
+            f"its divisor in {path} has {has} instead of {needed}; name one with the same months."
+        )
+    if field.hours != below.hours:
+        raise InputDataError(
+            f"its divisor in {path} has other hours; name one with the same hour axis."
+        )
+
+
+def _span(axis: Axis) -> str:
+    return f"{axis.centres[0]:g} to {axis.centres[-1]:g} ({len(axis)})"
+
+
+def _other_years(field: Field, below: Field) -> tuple[str, ...]:
+    """A warning if the dates of a ratio's parts differ."""
+    one, other = field.steps, below.steps
+    if not (one.calendar and other.calendar and one.step_years and other.step_years):
+        return ()
+    dates = [set(zip(steps.step_years, steps.months, strict=True)) for steps in (one, other)]
+    if dates[0] == dates[1]:
+        return ()
+    return (
+        f"the ratio divides {one.description} by {other.description}; check that they belong "
+        "together.",
+    )
 
 
 def _open(spec: InputSpec, known: InputVariable | None, variable: str | None) -> Field:
@@ -190,32 +233,33 @@ def _labels(dataset: xr.Dataset, dim: str) -> tuple[FloatArray, FloatArray | Non
     if dim not in dataset.variables:
         raise InputDataError(f"its dimension {dim} has no coordinate; add one in degrees.")
     coordinate = dataset[dim]
-    bounds = dataset.get(str(coordinate.attrs.get("bounds", "")))
-    usable = bounds is not None and bounds.shape == (coordinate.size, 2)
-    values = np.asarray(coordinate.values, float)
-    return values, np.asarray(bounds.values, float) if usable and bounds is not None else None
+    return np.asarray(coordinate.values, float), _bounds(dataset, coordinate)
+
+
+def _bounds(dataset: xr.Dataset, coordinate: xr.DataArray) -> FloatArray | None:
+    """Bounds of a coordinate's cells, if the file has them."""
+    attributes = coordinate.attrs
+    bounds = dataset.get(str(attributes.get("bounds", attributes.get("climatology", ""))))
+    if bounds is None or bounds.shape != (coordinate.size, 2):
+        return None
+    return np.asarray(bounds.values, float)
 
 
 def _steps(dataset: xr.Dataset, layout: Layout, known: InputVariable | None) -> Steps:
     if layout.time is None:
         return annual()
     count = dataset.sizes[layout.time]
-    if layout.time not in dataset.variables:
-        steps = read_steps(count, None, {})
-    else:
-        axis = dataset[layout.time]
-        bounds = dataset.get(str(axis.attrs.get("bounds", axis.attrs.get("climatology", ""))))
-        usable = bounds is not None and bounds.shape == (count, 2)
-        numeric = axis.dtype.kind in "iuf"
-        steps = read_steps(
-            count,
-            np.asarray(axis.values, float) if numeric else None,
-            axis.attrs,
-            np.asarray(bounds.values, float) if usable and bounds is not None else None,
+    if known is not None and known.time == "none" and count > 1:
+        raise InputDataError(
+            f"it has {count} steps along {layout.time}, but {known.name} does not change with "
+            "time; choose one and save it without that dimension."
         )
-    if known is not None and known.time == "none" and not steps.is_annual:
-        raise InputDataError(f"it has {count} time steps; one field is needed.")
-    return steps
+    if layout.time not in dataset.variables:
+        return read_steps(count, None, {})
+    axis = dataset[layout.time]
+    numeric = axis.dtype.kind in "iuf"
+    values = np.asarray(axis.values, float) if numeric else None
+    return read_steps(count, values, axis.attrs, _bounds(dataset, axis))
 
 
 def _hours(dataset: xr.Dataset, layout: Layout, spec: InputSpec) -> Hours | None:
@@ -223,6 +267,7 @@ def _hours(dataset: xr.Dataset, layout: Layout, spec: InputSpec) -> Hours | None
         return None
     if spec.name != "cloud_fraction":
         raise InputDataError("it has an hour axis, which only the cloud fraction may have.")
-    values = dataset[layout.hour] if layout.hour in dataset.variables else None
-    labels = None if values is None else np.asarray(values.values, float)
-    return read_hours(dataset.sizes[layout.hour], labels, None, spec.hours)
+    count = dataset.sizes[layout.hour]
+    if layout.hour not in dataset.variables:
+        return read_hours(count, None, None, spec.hours)
+    return read_hours(count, *_labels(dataset, layout.hour), spec.hours)

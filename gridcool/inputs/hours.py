@@ -97,10 +97,16 @@ def read_hours(
     width = 24.0 / count
     if values is None:
         return Hours(count, width / 2, clock)
-    labels = values if bounds is None else bounds.mean(axis=1)
+    labels = values if bounds is None else _middles(bounds)
     if not np.allclose(np.diff(labels), width, atol=1e-3):
         raise InputDataError(
             f"its hour axis counts {labels[0]:g} to {labels[-1]:g} in {count} steps, which do not "
             f"fill a day evenly; label the bins in hours, {width:g} apart."
         )
     return Hours(count, float(labels[0]), clock)
+
+
+def _middles(bounds: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Middles of bins, of which those over midnight may end before they begin."""
+    begin, end = bounds.T
+    return np.unwrap((begin + np.where(end < begin, end + 24.0, end)) / 2, period=24.0)
