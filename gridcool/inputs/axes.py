@@ -143,7 +143,8 @@ def longitude_axis(
         start = east[0] / 180.0
         whole = abs(edges[-1] - edges[0] - 360.0) < 1e-6
         if by_corner and whole and abs(start - round(start)) < 1e-6:
-            edges = edges + (edges[1] - edges[0]) / 2
+            shift = (edges[1] - edges[0]) / 2
+            east, edges = east + shift, edges + shift
             notes += ("longitudes label the western edge of each cell; moved by half a cell",)
     if edges[-1] - edges[0] > 360.0 + SINGLE:
         raise InputDataError("its longitudes go round more than once; correct its coordinates.")

@@ -20,6 +20,7 @@ FloatArray = NDArray[np.floating]
 
 #: Numbers read at once by one thread of the check, so that memory stays small.
 CHECK_VALUES = 8_000_000
+PERCENT = 0.01
 
 
 @dataclass(frozen=True)
@@ -41,18 +42,21 @@ class Extreme:
 class Survey:
     """What a pass over all of an input's values found.
 
-    ``weight`` and ``total`` are sums over the valid cells by area; counts are of values.
+    ``weight`` and ``total`` are sums over the valid cells by area; counts are of values. Where some
+    are infinite, the others are not looked at.
     """
 
     count: int
-    missing: int
-    weight: float
-    total: float
-    low: Extreme | None
-    high: Extreme | None
-    impossible: int
-    rounded: int
-    unusual: int
+    missing: int = 0
+    weight: float = 0.0
+    total: float = 0.0
+    low: Extreme | None = None
+    high: Extreme | None = None
+    impossible: int = 0
+    rounded: int = 0
+    unusual: int = 0
+    infinite: int = 0
+    first_infinite: Extreme | None = None
 
     @property
     def mean(self) -> float | None:
@@ -88,42 +92,60 @@ class _Once:
 
 def _survey_strip(once: _Once, rows: slice) -> Survey:
     field = once.field
-    values = field.read_raw(rows)
+    parts = field.read_parts(rows)
+    for part in parts:
+        infinite = np.isinf(part)
+        if infinite.any():
+            first = _extreme(field, rows, part, part.ravel()[np.argmax(infinite)])
+            return Survey(part.size, infinite=int(infinite.sum()), first_infinite=first)
+    values = field.combine(parts)
     valid = ~np.isnan(values)
-    weight = np.cos(np.deg2rad(field.latitude.centres[rows]))[:, None]
+    others = tuple(axis for axis in range(values.ndim) if axis != values.ndim - 2)
+    weight = np.cos(np.deg2rad(field.latitude.centres[rows]))
     found = np.where(valid, values, 0)
-    impossible = rounded = unusual = 0
-    if field.known is not None:
-        low, high = field.known.valid
-        margin = ROUNDING_SHARE * (high - low) if field.known.units == "1" else 0.0
-        outside = valid & ((values < low) | (values > high))
-        beyond = outside & ((values < low - margin) | (values > high + margin))
-        impossible = int(beyond.sum())
-        rounded = int(outside.sum()) - impossible
-        usual_low, usual_high = field.known.usual
-        unusual = int((valid & ((values < usual_low) | (values > usual_high))).sum())
+    low, high = (pick.reduce(values, axis=None) for pick in (np.fmin, np.fmax))
+    impossible, rounded, unusual = _outside(field.known, values, float(low), float(high))
     return Survey(
         count=values.size,
         missing=int(values.size - valid.sum()),
-        weight=float((weight * valid).sum()),
-        total=float((weight * found).sum(dtype=np.float64)),
-        low=_extreme(field, rows, np.where(valid, values, np.inf), np.argmin),
-        high=_extreme(field, rows, np.where(valid, values, -np.inf), np.argmax),
+        weight=float(valid.sum(axis=others) @ weight),
+        total=float(found.sum(axis=others, dtype=np.float64) @ weight),
+        low=_extreme(field, rows, values, low),
+        high=_extreme(field, rows, values, high),
         impossible=impossible,
         rounded=rounded,
         unusual=unusual,
     )
 
 
-def _extreme(field: Field, rows: slice, values: FloatArray, pick: object) -> Extreme | None:
-    index = int(pick(values))  # type: ignore[operator]
-    where = np.unravel_index(index, values.shape)
-    value = float(values[where])
-    if not np.isfinite(value):
+def _outside(
+    known: InputVariable | None, values: NDArray[np.float32], lowest: float, highest: float
+) -> tuple[int, int, int]:
+    """How many values are impossible, impossible by rounding only, and unusual."""
+    if known is None:
+        return 0, 0, 0
+
+    def beyond(low: float, high: float) -> int:
+        if not (lowest < low or highest > high):
+            return 0
+        return int(((values < low) | (values > high)).sum())
+
+    low, high = known.valid
+    margin = ROUNDING_SHARE * (high - low) if known.units == "1" else 0.0
+    impossible = beyond(low - margin, high + margin)
+    return impossible, beyond(low, high) - impossible, beyond(*known.usual)
+
+
+def _extreme(
+    field: Field, rows: slice, values: NDArray[np.float32], value: np.float32
+) -> Extreme | None:
+    """A value and the first place where it stands."""
+    if np.isnan(value):
         return None
+    where = np.unravel_index(int(np.argmax(values == value)), values.shape)
     longitude = float(field.longitude.centres[where[-1]])
     return Extreme(
-        value,
+        float(value),
         None if field.steps.is_annual else int(where[0]),
         float(field.latitude.centres[rows][where[-2]]),
         (longitude + 180) % 360 - 180,
@@ -143,16 +165,28 @@ def _joined(parts: list[Survey]) -> Survey:
         impossible=sum(part.impossible for part in parts),
         rounded=sum(part.rounded for part in parts),
         unusual=sum(part.unusual for part in parts),
+        infinite=sum(part.infinite for part in parts),
+        first_infinite=next((p.first_infinite for p in parts if p.first_infinite), None),
     )
 
 
 def judge(field: Field, found: Survey) -> Iterator[Finding]:
     """Errors for what is impossible, warnings for what is odd."""
     low, high = found.low, found.high
+    if found.first_infinite is not None:
+        number = "value is" if found.infinite == 1 else "values are"
+        yield Finding(
+            "error",
+            f"{field.label}: {found.infinite} {number} infinite, the first "
+            f"{found.first_infinite.place()}; declare what stands for missing as _FillValue, or "
+            "correct the file.",
+        )
+        return
     if low is None or high is None:
         yield Finding(
             "error",
-            f"{field.label}: every value is missing; check its fill value and its variable.",
+            f"{field.label}: every value is missing; check its fill value, its valid range and its "
+            "variable.",
         )
         return
     known = field.known
@@ -163,6 +197,7 @@ def judge(field: Field, found: Survey) -> Iterator[Finding]:
     if found.impossible:
         yield Finding("error", _impossible(field, found, known, low, high, span))
         return
+    yield from _percent(field, high)
     if found.rounded:
         yield Finding(
             "warning",
@@ -180,6 +215,22 @@ def judge(field: Field, found: Survey) -> Iterator[Finding]:
             "warning",
             f"{field.label}: {found.unusual} of {found.count - found.missing} values lie outside "
             f"the usual {usual} (worst {worst.value:.4g} {worst.place()}).",
+        )
+
+
+def _percent(field: Field, high: Extreme) -> Iterator[Finding]:
+    """A share that is called percent but never exceeds one percent is hardly in percent."""
+    conversion, known = field.conversion, field.known
+    percent = field.divisor is None and conversion.factor == PERCENT and conversion.offset == 0.0
+    if known is None or known.units != "1" or not percent:
+        return
+    if 0.0 < high.value <= PERCENT * (1 + ROUNDING_SHARE):
+        unit = f'units = "1" in [inputs.{known.name}]'
+        sure = "" if conversion.overridden else ', and if it is in percent, units = "percent"'
+        yield Finding(
+            "warning" if conversion.overridden else "error",
+            f'{field.label}: its unit is "{conversion.found}", but its largest value is '
+            f"{high.value / PERCENT:.3g} percent; if it holds fractions, say {unit}{sure}.",
         )
 
 

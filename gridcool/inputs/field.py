@@ -87,13 +87,18 @@ class Field:
         InputDataError
             If the file breaks off.
         """
-        return self.round_off(self.read_raw(rows))
+        return self.round_off(self.combine(self.read_parts(rows)))
 
-    def read_raw(self, rows: slice) -> NDArray[np.float32]:
-        """The same without rounding off."""
-        values = self.means.read(rows)
+    def read_parts(self, rows: slice) -> tuple[NDArray[np.float32], ...]:
+        """Monthly means as they lie in the file: of the variable and, of a ratio, the divisor."""
+        fields = (self,) if self.divisor is None else (self, self.divisor)
+        return tuple(field.means.read(rows) for field in fields)
+
+    def combine(self, parts: tuple[NDArray[np.float32], ...]) -> NDArray[np.float32]:
+        """What `read` returns, before rounding off."""
+        values = parts[0]
         if self.divisor is not None:
-            below = self.divisor.means.read(rows)
+            below = parts[1]
             dark = ~(below >= self.spec.divisor_minimum)
             values = np.where(dark, np.nan, values / np.where(dark, 1, below)).astype(np.float32)
             values *= np.float32(self.conversion.factor)

@@ -213,6 +213,8 @@ class _Sums:
 
     def add(self, values: NDArray[np.float32], year: int) -> None:
         found = ~np.isnan(values)
+        # Of either sign, lest two infinite values make a gap; the check reports them.
+        values = np.where(np.isinf(values), np.float32(np.inf), values)
         if self._by_year:
             if year != self._year:
                 self._close_year()
@@ -239,5 +241,6 @@ class _Sums:
         self._close_year()
         several = self._years > 1
         n = np.where(several, self._years, 2)
-        variance = np.maximum(self._squares - self._means**2 / n, 0) / (n - 1)
+        with np.errstate(invalid="ignore"):  # where a value is infinite
+            variance = np.maximum(self._squares - self._means**2 / n, 0) / (n - 1)
         return np.where(several, np.sqrt(variance / n), np.nan).astype(np.float32)

@@ -23,12 +23,18 @@ UNWRITTEN = 9.969209968386869e36
 
 @dataclass(frozen=True)
 class Packing:
-    """How stored numbers are read: ``value = stored * scale + offset``, fills are missing."""
+    """How stored numbers are read: ``value = stored * scale + offset``.
+
+    Stored numbers that are one of ``fills``, or lie below ``lowest`` or above ``highest``, are
+    missing.
+    """
 
     fills: tuple[float, ...] = ()
     scale: float = 1.0
     offset: float = 0.0
     reinterpret: str = ""
+    lowest: float = -np.inf
+    highest: float = np.inf
 
     @property
     def is_packed(self) -> bool:
@@ -43,25 +49,32 @@ class Packing:
             stored = stored.view(self.reinterpret)
         missing = self._missing(stored)
         scale, offset = self.scale * factor, self.offset * factor + shift
-        if scale == 1.0 and offset == 0.0:
-            values = stored.astype(np.float32, copy=True)
-        else:
-            values = (stored.astype(np.float64) * scale + offset).astype(np.float32)
+        # What is too large for single precision becomes infinite, which the check reports.
+        with np.errstate(over="ignore"):
+            if scale == 1.0 and offset == 0.0:
+                values = stored.astype(np.float32, copy=True)
+            else:
+                values = (stored.astype(np.float64) * scale + offset).astype(np.float32)
         if missing is not None:
             values[missing] = np.nan
         return values
 
     def _missing(self, stored: NDArray[Any]) -> NDArray[np.bool_] | None:
-        missing: NDArray[np.bool_] | None = None
+        kind = stored.dtype
+        found = []
         for fill in self.fills:
-            kind = stored.dtype
             if kind.kind in "iu":
                 limits = np.iinfo(kind)
-                if not (fill == int(fill) and limits.min <= fill <= limits.max):
+                if not (limits.min <= fill <= limits.max and fill == int(fill)):
                     continue
-            found = np.asarray(stored == kind.type(fill))
-            missing = found if missing is None else missing | found
-        return missing
+            found.append(np.asarray(stored == kind.type(fill)))
+        # In the data's own precision, lest 0.3 in single precision exceed 0.3 in double.
+        own = kind.type if kind.kind == "f" else np.float64
+        if self.lowest > -np.inf:
+            found.append(np.asarray(stored < own(self.lowest)))
+        if self.highest < np.inf:
+            found.append(np.asarray(stored > own(self.highest)))
+        return np.logical_or.reduce(found) if found else None
 
 
 def packing_from(attributes: Mapping[str, Any], dtype: DTypeLike) -> Packing:
@@ -83,8 +96,50 @@ def packing_from(attributes: Mapping[str, Any], dtype: DTypeLike) -> Packing:
     reinterpret = _reinterpretation(attributes, kind)
     if reinterpret.startswith("u"):
         fills = [fill % 2 ** (8 * kind.itemsize) if fill < 0 else fill for fill in fills]
-    unique = dict.fromkeys(fill for fill in fills if np.isfinite(fill))
-    return Packing(tuple(unique), scale[0], offset[0], reinterpret)
+    unique = dict.fromkeys(fill for fill in fills if not np.isnan(fill))
+    lowest, highest = _valid_range(attributes, kind, reinterpret, scale[0], offset[0])
+    return Packing(tuple(unique), scale[0], offset[0], reinterpret, lowest, highest)
+
+
+def _valid_range(
+    attributes: Mapping[str, Any],
+    kind: np.dtype[Any],
+    reinterpret: str,
+    scale: float,
+    offset: float,
+) -> tuple[float, float]:
+    """The range of stored numbers that ``valid_range``, ``valid_min``, ``valid_max`` declare.
+
+    They are of the type of the stored numbers; where they are of the wider type of the packing
+    instead, they are about the values (NetCDF User's Guide, attribute conventions).
+    """
+    sources = ("valid_range",) if "valid_range" in attributes else ("valid_min", "valid_max")
+    if sources == ("valid_range",):
+        ends = _numbers(attributes, "valid_range")
+        if len(ends) != 2:
+            raise InputDataError(
+                f"its attribute valid_range has {len(ends)} numbers instead of 2; correct the file."
+            )
+    else:
+        beyond = (-np.inf, np.inf)
+        ends = [
+            (_numbers(attributes, key) or [end])[0]
+            for key, end in zip(sources, beyond, strict=True)
+        ]
+    ends = [
+        end if not np.isnan(end) else far for end, far in zip(ends, (-np.inf, np.inf), strict=True)
+    ]
+    if kind.kind == "f":
+        return min(ends), max(ends)
+    wide = any(
+        np.asarray(attributes[key]).dtype.kind == "f" for key in sources if key in attributes
+    )
+    if wide and ("scale_factor" in attributes or "add_offset" in attributes):
+        # To the nearest thousandth, since the division may miss a whole number.
+        ends = [round((end - offset) / scale, 3) for end in ends]
+    elif reinterpret.startswith("u"):
+        ends = [end + 2 ** (8 * kind.itemsize) if -np.inf < end < 0 else end for end in ends]
+    return min(ends), max(ends)
 
 
 def _reinterpretation(attributes: Mapping[str, Any], kind: np.dtype[Any]) -> str:
