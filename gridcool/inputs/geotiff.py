@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import warnings
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -17,16 +18,67 @@ from gridcool.errors import InputDataError
 DEFAULT_NAME = "band_data"
 
 
-class BandArray(BackendArray):  # type: ignore[misc, unused-ignore]
-    """Bands of a file, read in windows; the file is opened for each reading, so threads may."""
+@dataclass(frozen=True)
+class Band:
+    """How one band's stored numbers are read.
 
-    def __init__(
-        self, path: Path, bands: tuple[int, ...], shape: tuple[int, int], dtype: str
-    ) -> None:
+    ``masked`` says that a mask lies beside them, ``alpha`` which band of the file tells where they
+    are transparent.
+    """
+
+    index: int
+    dtype: str
+    unit: str
+    fill: float | None
+    scale: float
+    offset: float
+    masked: bool
+    alpha: int | None
+
+    @property
+    def attributes(self) -> dict[str, Any]:
+        """The same as attributes of a variable."""
+        found: dict[str, Any] = {"units": self.unit} if self.unit else {}
+        if self.fill is not None:
+            found["_FillValue"] = self.fill
+        if self.scale != 1.0:
+            found["scale_factor"] = self.scale
+        if self.offset != 0.0:
+            found["add_offset"] = self.offset
+        return found
+
+    def values(self, stored: NDArray[Any], file: Any, window: Any) -> NDArray[Any]:
+        """Values, NaN where missing."""
+        missing = np.zeros(stored.shape, bool)
+        if self.masked:
+            missing |= file.read_masks(self.index, window=window) == 0
+        if self.alpha is not None:
+            missing |= file.read(self.alpha, window=window) == 0
+        if self.fill is not None:
+            missing |= stored == self.fill
+        return np.where(missing, np.nan, stored * self.scale + self.offset)
+
+
+class BandArray(BackendArray):  # type: ignore[misc, unused-ignore]
+    """Bands of a file, read in windows; the file is opened for each reading, so threads may.
+
+    Stored numbers come out as they are where all bands are alike, else as values.
+    """
+
+    def __init__(self, path: Path, bands: tuple[Band, ...], shape: tuple[int, int]) -> None:
         self.path = path
         self.bands = bands
         self.shape = (len(bands), *shape)
-        self.dtype = np.dtype(dtype)
+        partly = any(band.masked or band.alpha is not None for band in bands)
+        self.alike = not partly and len({str(band.attributes) for band in bands}) == 1
+        stored = np.dtype(bands[0].dtype)
+        self.dtype = stored if self.alike else np.result_type(stored, np.float32)
+
+    @property
+    def attributes(self) -> dict[str, Any]:
+        """Attributes by which what comes out is read."""
+        first = self.bands[0]
+        return first.attributes if self.alike else {"units": first.unit} if first.unit else {}
 
     def __getitem__(self, key: indexing.ExplicitIndexer) -> Any:
         return indexing.explicit_indexing_adapter(
@@ -39,14 +91,20 @@ class BandArray(BackendArray):  # type: ignore[misc, unused-ignore]
 
         band, row, column = key
         rows, columns = _positive(row, self.shape[1]), _positive(column, self.shape[2])
-        wanted = self.bands[band]
+        single = isinstance(band, int | np.integer)
+        wanted = (self.bands[band],) if single else self.bands[band]
+        indexes = [each.index for each in wanted]
+        window = Window.from_slices(rows, columns)
         with rasterio.open(self.path) as file:
-            values: NDArray[Any] = file.read(
-                list(wanted) if isinstance(wanted, tuple) else wanted,
-                window=Window.from_slices(rows, columns),
-            )
+            values: NDArray[Any] = file.read(indexes, window=window)
+            if not self.alike:
+                pieces = [
+                    each.values(part, file, window)
+                    for each, part in zip(wanted, values, strict=True)
+                ]
+                values = np.stack(pieces).astype(self.dtype)
         return values[
-            ...,
+            0 if single else slice(None),
             0 if isinstance(row, int | np.integer) else slice(None, None, row.step),
             0 if isinstance(column, int | np.integer) else slice(None, None, column.step),
         ]
@@ -124,20 +182,33 @@ def _crs_name(crs: Any) -> str:
 
 
 def _describe(path: Path, file: Any, variable: str | None) -> xr.Dataset:
-    bands = tuple(file.indexes)
+    bands = _bands(file)
     name = DEFAULT_NAME
-    chosen = [i for i, text in zip(bands, file.descriptions, strict=True) if text == variable]
+    chosen = [band for band in bands if file.descriptions[band.index - 1] == variable]
     if variable is not None and len(chosen) == 1:
         bands, name = tuple(chosen), variable
-    elif len(bands) == 1 and file.descriptions[0]:
-        name = file.descriptions[0]
-    array = BandArray(path, bands, (file.height, file.width), file.dtypes[bands[0] - 1])
-    block_rows, block_columns = file.block_shapes[bands[0] - 1]
+    elif len(bands) == 1 and file.descriptions[bands[0].index - 1]:
+        name = file.descriptions[bands[0].index - 1]
+    units = sorted({band.unit for band in bands})
+    if len(units) > 1:
+        raise InputDataError(
+            f"the bands of the GeoTIFF have several units ({', '.join(u or 'none' for u in units)})"
+            "; name one band as variable, or write bands of one unit."
+        )
+    array = BandArray(path, bands, (file.height, file.width))
+    block_rows, block_columns = file.block_shapes[bands[0].index - 1]
+    together = len(bands) if file.profile.get("interleave") == "pixel" else 1
     data = xr.Variable(
         ("band", "latitude", "longitude"),
         indexing.LazilyIndexedArray(array),
-        attrs=_attributes(file, bands[0] - 1),
-        encoding={"chunksizes": (1, block_rows, block_columns)},
+        attrs=array.attributes,
+        encoding={
+            "preferred_chunks": {
+                "band": together,
+                "latitude": block_rows,
+                "longitude": block_columns,
+            }
+        },
     )
     t = file.transform
     coordinates = {
@@ -158,14 +229,28 @@ def _edges(start: float, step: float, count: int, unit: str) -> tuple[NDArray[np
     return np.asarray(start + step * np.arange(count + 1), np.float64), unit
 
 
-def _attributes(file: Any, index: int) -> dict[str, Any]:
-    found: dict[str, Any] = {}
-    if file.nodatavals[index] is not None:
-        found["_FillValue"] = file.nodatavals[index]
-    if file.units[index]:
-        found["units"] = file.units[index]
-    if file.scales[index] != 1.0:
-        found["scale_factor"] = file.scales[index]
-    if file.offsets[index] != 0.0:
-        found["add_offset"] = file.offsets[index]
-    return found
+def _bands(file: Any) -> tuple[Band, ...]:
+    """Bands that hold data; a band of transparency is a mask to the others."""
+    from rasterio.enums import ColorInterp, MaskFlags
+
+    alpha = None
+    if file.count > 1 and ColorInterp.alpha in file.colorinterp:
+        alpha = file.colorinterp.index(ColorInterp.alpha) + 1
+    found = []
+    for place, index in enumerate(file.indexes):
+        if index == alpha:
+            continue
+        flags = set(file.mask_flag_enums[place])
+        found.append(
+            Band(
+                index=index,
+                dtype=file.dtypes[place],
+                unit=file.units[place] or "",
+                fill=file.nodatavals[place],
+                scale=file.scales[place],
+                offset=file.offsets[place],
+                masked=not flags & {MaskFlags.all_valid, MaskFlags.nodata, MaskFlags.alpha},
+                alpha=alpha,
+            )
+        )
+    return tuple(found)

@@ -34,7 +34,6 @@ class Stored:
         self._variable, self._layout, self._label = variable, layout, label
         sizes = variable.sizes
         pieces = variable.encoding.get("preferred_chunks") or {}
-        self.in_pieces = bool(pieces)
         self.steps = sizes[layout.time] if layout.time is not None else 1
         self.has_hours = layout.hour is not None
         self.hours = sizes[layout.hour] if layout.hour is not None else 1
@@ -43,6 +42,12 @@ class Stored:
             int(pieces.get(layout.latitude, 1)),
             int(pieces.get(layout.longitude, sizes[layout.longitude])),
         )
+
+    @property
+    def in_pieces(self) -> bool:
+        """Whether a row cannot be read without unpacking other rows or steps."""
+        steps, rows, _ = self._piece
+        return steps > 1 or rows > 1
 
     @property
     def steps_together(self) -> int:
