@@ -7,6 +7,7 @@ import importlib
 from collections.abc import Callable, Sequence
 from functools import cache
 from importlib.resources import files
+from importlib.resources.abc import Traversable
 from typing import Any
 
 from dask.base import compute
@@ -21,6 +22,7 @@ THREADS = "threads"
 #: Rooms whose code decides what a block holds.
 COMPUTING_ROOMS = ("physics", "engine")
 CONNECT_SECONDS = 10
+TEXTS = (".py", ".toml", ".j2", ".css", ".js", ".json")
 
 Advance = Callable[[int, int], None]
 
@@ -89,8 +91,23 @@ def code_digest() -> str:
     """What stands for the version of the code that computes: its own text, and the release."""
     digest = hashlib.sha256(__version__.encode())
     for room in COMPUTING_ROOMS:
-        for file in sorted((files("gridcool") / room).iterdir(), key=lambda each: each.name):
-            if file.name.endswith(".py"):
-                digest.update(file.read_bytes())
+        _add_texts(digest, files("gridcool") / room)
     digest.update((files("gridcool") / "variables.toml").read_bytes())
     return digest.hexdigest()
+
+
+@cache
+def program_digest() -> str:
+    """What stands for the version of the whole program: all its own files."""
+    digest = hashlib.sha256(__version__.encode())
+    _add_texts(digest, files("gridcool"))
+    return digest.hexdigest()
+
+
+def _add_texts(digest: Any, folder: Traversable) -> None:
+    for entry in sorted(folder.iterdir(), key=lambda each: each.name):
+        if entry.is_dir() and entry.name != "__pycache__":
+            _add_texts(digest, entry)
+        elif entry.name.endswith(TEXTS):
+            digest.update(entry.name.encode())
+            digest.update(entry.read_bytes())

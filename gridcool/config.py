@@ -26,6 +26,7 @@ from gridcool.sections import (
     Input,
     Job,
     Layers,
+    Maps,
     Panel,
     Release,
     Section,
@@ -49,6 +50,7 @@ class Settings(Section):
     worth: Worth = Worth()
     uncertainty: Uncertainty = Uncertainty()
     layers: Layers = Layers()
+    maps: Maps = Maps()
     exclude: list[Exclude] = Field(default_factory=list)
     criterion: list[Criterion] = Field(default_factory=list)
     suitability: Suitability = Suitability()

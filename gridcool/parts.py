@@ -22,6 +22,12 @@ from gridcool.inputs.spec import InputSpec
 from gridcool.planning.worth import PanelCosts
 from gridcool.variables import layer_variables
 
+REFERENCES = (
+    "Bird & Hulstrom 1981 SERI/TR-642-761; Kasten & Czeplak 1980 Solar Energy 24; "
+    "Falls 1974 J. Geophys. Res. 79; Hargreaves & Samani 1982 and FAO-56; Spencer 1971; "
+    "Kasten & Young 1989 Appl. Opt. 28; Meador & Weaver 1980 J. Atmos. Sci. 37; "
+    "Donohoe & Battisti 2011 J. Climate 24"
+)
 CAUTION = (
     "For screening only. Glare and aviation, fire from concave or damaged reflectors, wind "
     "loading, broken glass, plants and wildlife under shade, rain and neighbours, and land rights "

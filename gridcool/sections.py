@@ -27,9 +27,10 @@ class Section(BaseModel):
 
 
 class Job(Section):
-    """Free name of the job and the folder of its products."""
+    """Free name of the job, a note for its readers, and the folder of its products."""
 
     name: str = "gridcool"
+    note: str = ""
     output: str = "out"
 
 
@@ -152,6 +153,22 @@ class Layers(Section):
                     f"did you mean {near[0]}?" if near else f"on request are {', '.join(offered)}"
                 )
                 raise ValueError(f"extra: there is no layer {name} on request; {hint}")
+        return self
+
+
+class Maps(Section):
+    """Which layers are drawn (the usual ones if none is named), and whether with coastlines."""
+
+    layers: list[str] = []
+    coastlines: bool = True
+
+    @model_validator(mode="after")
+    def _known(self) -> Self:
+        for name in self.layers:
+            if name not in layer_variables():
+                near = difflib.get_close_matches(name, layer_variables(), n=1, cutoff=0.5)
+                hint = f"; did you mean {near[0]}?" if near else ""
+                raise ValueError(f"layers: there is no layer {name}{hint}")
         return self
 
 

@@ -33,9 +33,15 @@ MAY_KNOW = {
     "parts": {"variables", "grid", "errors", "config", "inputs", "engine", "planning"},
     "planned": {"variables", "grid", "config", "parts", "planning"},
     "place": {"grid", "errors", "config", "inputs", "engine", "planning", "parts"},
+    "presenting": {
+        *("variables", "grid", "config", "parts", "planned", "gridcool"),
+        *("inputs", "planning", "products", "release"),
+    },
+    "renewal": {"config", "errors", "presenting", "release"},
     "pipeline": {
         *("physics", "variables", "grid", "errors", "config", "parts", "computing", "planned"),
         *("inputs", "engine", "planning", "products", "release", "gridcool"),
+        *("presenting", "renewal"),
     },
     "cli": {"config", "pipeline", "place", "products", "errors", "gridcool"},
     "gridcool": {"config", "parts"},  # its __init__, on first use only
@@ -116,7 +122,7 @@ def test_the_declared_order_has_no_cycle_and_keeps_neighbours_apart() -> None:
     for room in ("engine", "planning"):
         assert not MAY_KNOW[room] & side_by_side
     assert {room for room, others in MAY_KNOW.items() if "config" in others} == {
-        *("cli", "pipeline", "parts", "planned", "place", "gridcool")
+        *("cli", "pipeline", "parts", "planned", "place", "gridcool", "presenting", "renewal")
     }
 
 
