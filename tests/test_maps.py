@@ -69,7 +69,7 @@ def test_maps_show_their_layers(tmp_path: Path, grid: Grid) -> None:
     assert share(picture, ends[-1]) > 0.0005
     assert share(picture, MISSING) > 0.0005
     assert "Hatched" in flux.caption
-    assert "W m-2" in flux.caption
+    assert "W m⁻²" in flux.caption
     told = colours(why.path)
     assert share(told, (250, 250, 245)) > 0.1  # what is eligible
     assert len(np.unique(told.reshape(-1, 3), axis=0)) > 20

@@ -58,7 +58,8 @@ def main_reason(
     if exclusion is None:
         flat = eligible.ravel()
         return ["" if flat[cover.cells].any() else no_data for cover in covers]
-    rules = exclusion_losses(exclusion, covers, flags)
+    # Of two that take as much, a rule tells more than a lack of data.
+    rules = exclusion_losses(exclusion, covers, [*flags[1:], *flags[:1]])
     rules = rules.sort_values("area_km2", ascending=False, kind="stable")
     first = rules.drop_duplicates("region").set_index("region")["reason"]
     return [

@@ -127,21 +127,22 @@ def _scale_bar(axes: Any) -> None:
 
 def _coast_within(bounds: Bounds) -> list[Any]:
     """The coast inside the bounds and a little beyond, no finer than can be seen."""
-    margin = 0.1 * (bounds.east - bounds.west)
+    globe = bounds.east - bounds.west >= WIDE
+    # Where the globe is cut open, a line along the cut would run across the whole map.
+    margin = -0.01 if globe else 0.1 * (bounds.east - bounds.west)
     found = []
     for turn in (-360, 0, 360):  # bounds may run past 180
         lines = shapely.clip_by_rect(
             coastline(),
             bounds.west - turn - margin,
-            bounds.south - margin,
+            max(bounds.south - margin, -90.0),
             bounds.east - turn + margin,
             bounds.north + margin,
         )
-        lines = shapely.simplify(lines[~shapely.is_empty(lines)], margin / 150)
+        tolerance = (bounds.east - bounds.west) / 1500
+        lines = shapely.simplify(lines[~shapely.is_empty(lines)], tolerance)
         found += list(shapely.transform(lines, lambda xy, t=turn: xy + np.array([t, 0.0])))
-    if bounds.east - bounds.west < WIDE:
-        return found
-    return [line for line in found if line.bounds[0] >= -180 and line.bounds[2] <= 180]
+    return found
 
 
 @cache

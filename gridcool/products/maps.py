@@ -172,10 +172,11 @@ def _categories(
         names = [_words(each.description) for each in layer.classes]
         colours = [MISSING, *class_colours(len(layer.classes) - 1)]
         return np.asarray(values, float), names, colours
-    # Of several reasons, a cell shows the first of the settings file.
+    # Of several reasons, a cell shows the first of the settings file, and "unknown" only if alone.
     shown = np.zeros(values.shape)
     whole = values.astype(int)
-    for number, flag in reversed(list(enumerate(layer.flags, start=1))):
+    numbered = list(enumerate(layer.flags, start=1))
+    for number, flag in (*numbered[:1], *reversed(numbered[1:])):
         shown[(whole & flag.value) > 0] = number
     names = ["eligible", *[_words(flag.description) for flag in layer.flags]]
     colours = [(250, 250, 245), (150, 150, 150), *_apart(len(layer.flags) - 1)]
@@ -234,9 +235,12 @@ def _words(text: str) -> str:
 
 def _legend(layer: LayerVariable) -> str:
     """The layer's name and unit as people write it."""
-    unit = layer.units.replace("-2", "⁻²").replace("-1", "⁻¹")
-    name = layer.name.replace("_", " ")
-    return name if unit in ("1", "") else f"{name} ({unit})"
+    name, unit = layer.name.replace("_", " "), _unit(layer)
+    return f"{name} ({unit})" if unit else name
+
+
+def _unit(layer: LayerVariable) -> str:
+    return "" if layer.units == "1" else layer.units.replace("-2", "⁻²").replace("-1", "⁻¹")
 
 
 def _caption(layer: LayerVariable, values: FloatArray, excluded: FloatArray | None) -> str:
@@ -250,7 +254,7 @@ def _caption(layer: LayerVariable, values: FloatArray, excluded: FloatArray | No
     hatched = excluded is not None and (excluded.astype(int) > 1).any()
     return (
         f"Map of {layer.name.replace('_', ' ')}: nine cells in ten lie between {low:.3g} and "
-        f"{high:.3g}, half below {middle:.3g} {'' if layer.units == '1' else layer.units}".rstrip()
+        f"{high:.3g}, half below {middle:.3g} {_unit(layer)}".rstrip()
         + (". Hatched: left out by a rule." if hatched else ".")
     )
 

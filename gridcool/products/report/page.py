@@ -20,7 +20,16 @@ from gridcool.products.failure import output_errors
 from gridcool.products.ramps import MISSING, ramp
 from gridcool.products.report.facts import ReportFacts
 from gridcool.products.report.shapes import drawing
-from gridcool.products.report.words import facing, headline, listed, number, percent, ranks
+from gridcool.products.report.words import (
+    chance,
+    facing,
+    headline,
+    listed,
+    number,
+    percent,
+    ranks,
+    unit,
+)
 
 MOST_ROWS = 300
 RANKED_BY = {
@@ -59,8 +68,14 @@ COLUMNS = (
     Column("Low rays", "h per year", "low_ray_hours"),
     Column("Most is lost to", "", "main_exclusion", text=True),
 )
-#: What the picture of the regions can be coloured by.
-SHADES = ("suitability_mean", "rejected_flux_mean", "chance_top", "eligible_share", "tilt")
+#: What the picture of the regions can be coloured by, with its unit.
+SHADES = {
+    "suitability_mean": "",
+    "rejected_flux_mean": "W m⁻²",
+    "chance_top": "",
+    "eligible_share": "",
+    "tilt": "°",
+}
 
 
 def write_report(facts: ReportFacts, path: Path) -> None:
@@ -105,7 +120,7 @@ def render(facts: ReportFacts) -> str:
             (
                 *(each.name, each.long_name),
                 *map(number, (each.minimum, each.mean, each.maximum)),
-                each.units,
+                unit(each.units),
             )
             for each in facts.layers
         ],
@@ -155,7 +170,9 @@ def _shown(column: Column, row: dict[Any, Any]) -> str:
     value = row[column.source]
     if column.source == "rank_low":
         return ranks(value, row["rank_high"])
-    if column.source in ("chance_top", "eligible_share"):
+    if column.source == "chance_top":
+        return chance(value)
+    if column.source == "eligible_share":
         return percent(value)
     if column.source == "tilt":
         return facing(value, row["azimuth"])
@@ -165,7 +182,7 @@ def _shown(column: Column, row: dict[Any, Any]) -> str:
     if column.text:
         return str(value)
     if column.source == "rank":
-        return number(value, 6)
+        return number(None) if pd.isna(value) else str(int(value))
     return number(value, column.digits)
 
 
@@ -252,10 +269,8 @@ def _picture_of_regions(facts: ReportFacts) -> dict[str, Any]:
         if table[source].isna().all():
             continue
         values = [None if pd.isna(each) else float(each) for each in table[source]]
-        unit = "°" if source == "tilt" else known[source].unit
-        unit = "" if source in ("suitability_mean", "chance_top", "eligible_share") else unit
         name = "Tilt" if source == "tilt" else known[source].name
-        columns.append({"name": name, "unit": unit, "values": values})
+        columns.append({"name": name, "unit": SHADES[source], "values": values})
     if not columns:
         return {"drawing": None}
     colours = [_hex(colour) for colour in ramp("suitability").colours(9)]

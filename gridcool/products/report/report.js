@@ -42,7 +42,7 @@
       const step = Math.min(data.colours.length - 1, Math.floor(share * data.colours.length));
       path.setAttribute("fill", number === null ? data.missing : data.colours[step]);
     }
-    legend.textContent = `${shown(low)} to ${shown(high)} ${column.unit}`;
+    legend.textContent = `${shown(low)} to ${shown(high)} ${column.unit}`.trim();
   };
   const tell = (path) => {
     const row = Number(path.dataset.row);

@@ -21,7 +21,13 @@ def number(value: Any, digits: int = 3) -> str:
     size = abs(float(value))
     if size == 0:
         return "0"
-    decimals = max(0, digits - 1 - math.floor(math.log10(size)))
+    power = math.floor(math.log10(size))
+    if power >= 9:
+        exponent = "".join("⁰¹²³⁴⁵⁶⁷⁸⁹"[int(each)] for each in str(power))
+        return f"{float(value) / 10**power:.{digits - 1}f} × 10{exponent}"
+    if power >= 6:
+        return f"{float(f'{float(value) / 1e6:.{digits}g}'):g} million"
+    decimals = max(0, digits - 1 - power)
     return f"{round(float(value), decimals):,.{min(decimals, 6)}f}".replace(",", "\u202f")
 
 
@@ -37,13 +43,25 @@ def percent(share: Any) -> str:
     return f"{value:.0f} %"
 
 
+def chance(share: Any) -> str:
+    """A chance counted over draws: never said to be quite sure."""
+    if share is None or pd.isna(share):
+        return MISSING
+    return percent(min(max(float(share), 1e-9), 1 - 1e-9))
+
+
+def unit(text: str) -> str:
+    """A unit with its exponents raised."""
+    return text.replace("-2", "⁻²").replace("-1", "⁻¹")
+
+
 def facing(tilt: Any, azimuth: Any) -> str:
     """How a panel stands."""
     if pd.isna(tilt):
         return MISSING
     if pd.isna(azimuth) or float(tilt) < 0.5:
         return "flat"
-    return f"{float(tilt):.0f}° to the {COMPASS[round(float(azimuth) / 45) % 8]}"
+    return f"{float(tilt):.0f}° {COMPASS[round(float(azimuth) / 45) % 8]}"
 
 
 def ranks(low: Any, high: Any) -> str:
@@ -88,7 +106,7 @@ def _sure(top: pd.DataFrame, sure: pd.DataFrame, wanted: int) -> str:
     best = "the best" if wanted == 1 else f"the best {wanted}"
     if len(sure) == len(top):
         return f"Each of them is among {best} with a chance of at least nine in ten."
-    chances = [f"{percent(chance)}" for chance in top["chance_top"]]
+    chances = [chance(each) for each in top["chance_top"]]
     return f"Their chances of really being among {best} are {listed(chances)}, in this order."
 
 
