@@ -24,8 +24,8 @@ Unpack = Callable[[NDArray[Any]], NDArray[np.float32]]
 
 #: Bytes to work on at once, as far as the file's pieces allow.
 WORKING_BYTES = 256_000_000
-#: Bytes of the sums that one month of one cell needs.
-SUM_BYTES = 44
+#: Bytes of the sums that one month of one cell needs, and of those where years have many steps.
+SUM_BYTES, GROUPED_BYTES = 20, 44
 #: Cells whose values are turned from stored numbers to sums at once.
 PASSING_CELLS = 2_000_000
 
@@ -59,6 +59,8 @@ class MonthlyMeans:
         self._years = steps.step_years or (0,) * len(self._months)
         self._latitude, self._longitude = latitude, longitude
         self._spread = spread
+        dates = set(zip(self._months, self._years, strict=True))
+        self._grouped = spread and len(dates) < len(self._months)
         self._planes = len(set(self._months)) * stored.hours
         self._lock = Lock()
         self._kept: Scratch | None = None
@@ -127,7 +129,8 @@ class MonthlyMeans:
         """How many cells to work on at once."""
         together = self._stored.steps_together
         repeated = len(self._months) > len(set(self._months))
-        sums = SUM_BYTES * (min(12, together) if repeated else 0)
+        each = GROUPED_BYTES if self._grouped else SUM_BYTES
+        sums = each * min(12, together) if repeated else 0
         return max(1, WORKING_BYTES // (self._stored.hours * (8 * together + sums)))
 
     def _order(self) -> Iterator[tuple[slice, list[int]]]:
@@ -169,7 +172,7 @@ class MonthlyMeans:
                         continue
                     key = month, part.start
                     if key not in sums:
-                        sums[key] = _Sums(values.shape, by_year=self._spread)
+                        sums[key] = _Sums(values.shape, spread=self._spread, grouped=self._grouped)
                     sums[key].add(values, self._years[step])
                     if left[month]:
                         continue
@@ -200,47 +203,58 @@ def _cut(rows: slice, height: int) -> list[slice]:
 
 
 class _Sums:
-    """Running sums of one month; years come one after the other."""
+    """Running sums of one month.
 
-    def __init__(self, shape: tuple[int, ...], *, by_year: bool) -> None:
-        self._by_year = by_year
-        self._year: int | None = None
+    For a spread, years come one after the other, each as one step, or (``grouped``) as several.
+    Two infinite values of different sign sum to no number; that is made infinite again at the end,
+    so that the check reports it.
+    """
+
+    def __init__(self, shape: tuple[int, ...], *, spread: bool, grouped: bool) -> None:
+        self._spread, self._grouped = spread, grouped
         self._total, self._count = np.zeros(shape), np.zeros(shape, np.int32)
-        if by_year:
+        # Of yearly means: their sum, their number and their sum of squares.
+        self._means, self._years = self._total, self._count
+        if spread:
+            self._squares = np.zeros(shape)
+        if grouped:
+            self._year: int | None = None
             self._year_total, self._year_count = np.zeros(shape), np.zeros(shape, np.int32)
-            self._means, self._squares = np.zeros(shape), np.zeros(shape)
-            self._years = np.zeros(shape, np.int32)
+            self._means, self._years = np.zeros(shape), np.zeros(shape, np.int32)
 
     def add(self, values: NDArray[np.float32], year: int) -> None:
         found = ~np.isnan(values)
-        # Of either sign, lest two infinite values make a gap; the check reports them.
-        values = np.where(np.isinf(values), np.float32(np.inf), values)
-        if self._by_year:
-            if year != self._year:
-                self._close_year()
-                self._year = year
-            np.add(self._year_total, values, out=self._year_total, where=found)
-            self._year_count += found
-        np.add(self._total, values, out=self._total, where=found)
-        self._count += found
+        with np.errstate(invalid="ignore"):
+            np.add(self._total, values, out=self._total, where=found)
+            self._count += found
+            if self._grouped:
+                if year != self._year:
+                    self._close_year()
+                    self._year = year
+                np.add(self._year_total, values, out=self._year_total, where=found)
+                self._year_count += found
+            elif self._spread:
+                squares = np.square(values, dtype=np.float64)
+                np.add(self._squares, squares, out=self._squares, where=found)
 
     def _close_year(self) -> None:
         """Count a year as one, however many days of it there are."""
-        known = self._year_count > 0
         mean = self._year_total / np.maximum(self._year_count, 1)
         self._means += mean
         self._squares += mean**2
-        self._years += known
+        self._years += self._year_count > 0
         self._year_total[:], self._year_count[:] = 0, 0
 
     def mean(self) -> NDArray[np.float32]:
         known = self._count > 0
-        return np.where(known, self._total / np.maximum(self._count, 1), np.nan).astype(np.float32)
+        total = np.where(np.isnan(self._total), np.inf, self._total)
+        return np.where(known, total / np.maximum(self._count, 1), np.nan).astype(np.float32)
 
     def standard_error(self) -> NDArray[np.float32]:
-        self._close_year()
-        several = self._years > 1
-        n = np.where(several, self._years, 2)
-        with np.errstate(invalid="ignore"):  # where a value is infinite
+        with np.errstate(invalid="ignore"):
+            if self._grouped:
+                self._close_year()
+            several = self._years > 1
+            n = np.where(several, self._years, 2)
             variance = np.maximum(self._squares - self._means**2 / n, 0) / (n - 1)
-        return np.where(several, np.sqrt(variance / n), np.nan).astype(np.float32)
+            return np.where(several, np.sqrt(variance / n), np.nan).astype(np.float32)
