@@ -1,4 +1,4 @@
-"""The command line: commands, exit codes, progress.
+"""The command line: commands and exit codes.
 
 The pipeline and its libraries are loaded only when a command needs them, so that ``--help`` answers
 at once.
@@ -10,13 +10,15 @@ import argparse
 import importlib
 import json
 import os
+import signal
 import sys
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
 from gridcool import __version__
-from gridcool.errors import GridcoolError
+from gridcool.errors import GridcoolError, OutputError
+from gridcool.reporting import event, progress_for
 
 EXIT_CODES = """exit codes:
   0  done, or nothing to do
@@ -24,26 +26,51 @@ EXIT_CODES = """exit codes:
   2  wrong use or settings
   3  an input is missing, broken or impossible
   4  another run is active in the same output folder
-  5  the product could not be written
+  5  the product could not be written, or a release is damaged
 """
+INTERRUPTED, TERMINATED = 130, 143  # 128 and the number of the signal, as shells have it
+
+
+class _Terminated(KeyboardInterrupt):
+    """The system asked the run to end."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
     options = _parser().parse_args(arguments)
+    _listen()
     try:
         options.command(options)
         sys.stdout.flush()
     except GridcoolError as problem:
-        print(f"gridcool: {problem}", file=sys.stderr)
-        return problem.exit_code
+        return _failed(options, str(problem), problem.exit_code)
     except BrokenPipeError:  # the reader of our lines, such as head, has seen enough
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
-    except KeyboardInterrupt:
-        print("gridcool: stopped; the last release is untouched.", file=sys.stderr)
-        return 130
+    except KeyboardInterrupt as stop:
+        code = TERMINATED if isinstance(stop, _Terminated) else INTERRUPTED
+        text = "stopped; finished blocks are kept and the last release is untouched."
+        return _failed(options, text, code)
     return 0
+
+
+def _failed(options: argparse.Namespace, text: str, code: int) -> int:
+    if getattr(options, "json_lines", False):
+        event("failed", exit_code=code, text=text)
+    print(f"gridcool: {text}", file=sys.stderr)
+    return code
+
+
+def _listen() -> None:
+    """End cleanly when the system asks for it, as with Ctrl-C."""
+
+    def stop(_number: int, _frame: object) -> None:
+        raise _Terminated
+
+    try:
+        signal.signal(signal.SIGTERM, stop)
+    except ValueError:  # not the main thread: whoever called us minds the signals
+        return
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -56,24 +83,37 @@ def _parser() -> argparse.ArgumentParser:
     )
     parser.add_argument("--version", action="version", version=f"gridcool {__version__}")
     commands = parser.add_subparsers(metavar="COMMAND", required=True)
-    check = commands.add_parser("check", help="open every input and print what was understood")
-    check.set_defaults(command=_check)
-    screen = commands.add_parser("screen", help="do the whole job and publish a release")
-    screen.set_defaults(command=_screen)
-    cell = commands.add_parser("cell", help="explain one place: where its light goes, and why")
-    cell.set_defaults(command=_cell)
-    for command in (check, screen, cell):
-        command.add_argument("settings", type=Path, help="settings file (TOML)")
-    screen.add_argument("--quiet", action="store_true", help="print the summary line only")
+
+    def command(name: str, action: Any, text: str) -> argparse.ArgumentParser:
+        added = commands.add_parser(name, help=text, description=text)
+        added.set_defaults(command=action)
+        return added
+
+    check = command("check", _check, "open every input and print what was understood")
+    screen = command("screen", _screen, "do the whole job and publish a release")
+    refresh = command("refresh", _refresh, "publish a new release only if something changed")
+    cell = command("cell", _cell, "explain one place: where its light goes, and why")
+    for each in (check, screen, refresh, cell):
+        each.add_argument("settings", type=Path, help="settings file (TOML)")
+    for each in (screen, refresh):
+        each.add_argument("--quiet", action="store_true", help="print the summary only")
+        each.add_argument("--json-lines", action="store_true", help="print events as JSON lines")
+    refresh.add_argument("--dry-run", action="store_true", help="say what would be done, and why")
     cell.add_argument("latitude", type=float, help="degrees north")
     cell.add_argument("longitude", type=float, help="degrees east")
     cell.add_argument("--json", action="store_true", help="print the facts as JSON")
     cell.add_argument("--figure", type=Path, help="also draw them (.png or .svg)")
+    compare = command("compare", _compare, "say what changed between two releases or settings")
+    compare.add_argument("a", type=Path, help="release folder or settings file")
+    compare.add_argument("b", type=Path, help="another of the same kind")
+    compare.add_argument("--json", action="store_true", help="print the facts as JSON")
+    compare.add_argument("--map", type=Path, help="also draw the change of the flux (.png)")
+    compare.add_argument("--quiet", action="store_true", help="no progress")
+    verify = command("verify", _verify, "hold every file of a release against its checksum")
+    verify.add_argument("release", type=Path, help="release folder, such as OUT/current")
+    demo = command("demo", _demo, "write a starter project with invented data")
+    demo.add_argument("folder", type=Path, help="a folder that does not exist yet")
     return parser
-
-
-def _pipeline() -> Any:
-    return importlib.import_module("gridcool.pipeline")
 
 
 def _settings(path: Path) -> Any:
@@ -81,14 +121,52 @@ def _settings(path: Path) -> Any:
 
 
 def _check(options: argparse.Namespace) -> None:
-    for line in _pipeline().check(_settings(options.settings)):
+    for line in importlib.import_module("gridcool.pipeline").check(_settings(options.settings)):
         print(line)
 
 
 def _screen(options: argparse.Namespace) -> None:
     settings = _settings(options.settings)
-    with _progress(quiet=options.quiet) as progress:
-        result = _pipeline().screen(settings, progress)
+    with progress_for(quiet=options.quiet, json_lines=options.json_lines) as progress:
+        result = importlib.import_module("gridcool.pipeline").screen(settings, progress)
+    _told(options, result)
+
+
+def _refresh(options: argparse.Namespace) -> None:
+    settings = _settings(options.settings)
+    pipeline = importlib.import_module("gridcool.pipeline")
+    with progress_for(quiet=options.quiet, json_lines=options.json_lines) as progress:
+        result = pipeline.refresh(settings, progress, dry_run=options.dry_run)
+    if result.screened is not None:
+        _told(options, result.screened)
+        return
+    if options.json_lines:
+        event(
+            "done",
+            release=None,
+            reasons=list(result.reasons),
+            blocks=result.blocks,
+            to_compute=result.to_compute,
+        )
+        return
+    if not result.reasons:
+        print("Nothing to do: inputs, settings and program are those of the current release.")
+        return
+    print(f"Would compute {result.to_compute} of {result.blocks} blocks and publish a release:")
+    for reason in result.reasons:
+        print(f"  {reason}")
+
+
+def _told(options: argparse.Namespace, result: Any) -> None:
+    """The summary of a published release."""
+    if options.json_lines:
+        event(
+            "done",
+            release=str(result.release),
+            blocks=result.blocks,
+            computed=result.computed,
+        )
+        return
     for line in result.summary(top=5):
         print(line)
 
@@ -106,59 +184,29 @@ def _cell(options: argparse.Namespace) -> None:
         print(line)
 
 
-class _Lines:
-    """Progress as plain lines on standard error, for logs and pipes."""
-
-    def __enter__(self) -> _Lines:
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        return None
-
-    def stage(self, text: str) -> None:
-        print(f"gridcool: {text}", file=sys.stderr, flush=True)
-
-    def advance(self, done: int, total: int) -> None:
-        """Plain lines tell the stages only."""
+def _compare(options: argparse.Namespace) -> None:
+    comparing = importlib.import_module("gridcool.comparing")
+    page = importlib.import_module("gridcool.products.comparison")
+    with progress_for(quiet=options.quiet or options.json, json_lines=False) as progress:
+        made = comparing.compare(options.a, options.b, progress, options.map)
+    if options.json:
+        facts = page.comparison_facts(made.found, made.causes)
+        print(json.dumps(facts, indent=2, ensure_ascii=False))
+        return
+    for line in page.comparison_lines(made.found, made.causes):
+        print(line)
 
 
-class _Silent(_Lines):
-    """No progress at all."""
-
-    def stage(self, text: str) -> None:
-        """Say nothing."""
-
-
-class _Bar(_Lines):
-    """A progress bar on a terminal."""
-
-    def __init__(self) -> None:
-        rich = importlib.import_module("rich.progress")
-        console = importlib.import_module("rich.console").Console(stderr=True)
-        self._escape = importlib.import_module("rich.markup").escape
-        self._bar = rich.Progress(console=console, transient=True)
-        self._task = self._bar.add_task("", total=None)
-
-    def __enter__(self) -> _Bar:
-        self._bar.start()
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        self._bar.stop()
-
-    def stage(self, text: str) -> None:
-        # Brackets in a text, such as those of a settings key, are no markup.
-        self._bar.console.print(text, highlight=False, markup=False, soft_wrap=True)
-        self._bar.reset(self._task, description=self._escape(text), total=None)
-
-    def advance(self, done: int, total: int) -> None:
-        self._bar.update(self._task, completed=done, total=total)
+def _verify(options: argparse.Namespace) -> None:
+    problems = importlib.import_module("gridcool.pipeline").verify(options.release)
+    if problems:
+        raise OutputError(f"{options.release} is damaged: " + " ".join(problems))
+    print(f"{options.release} is whole: every file is as it was made.")
 
 
-def _progress(*, quiet: bool) -> _Lines:
-    if quiet:
-        return _Silent()
-    return _Bar() if sys.stderr.isatty() else _Lines()
+def _demo(options: argparse.Namespace) -> None:
+    path = importlib.import_module("gridcool.starter").write_starter(options.folder)
+    print(f"Wrote a starter project with invented data. Next: gridcool screen {path}")
 
 
 if __name__ == "__main__":

@@ -10,6 +10,7 @@ import numpy as np
 import rasterio
 from numpy.typing import NDArray
 
+from gridcool.grid import Grid
 from gridcool.products.geotiff import LAYER_FOLDER
 
 
@@ -36,3 +37,10 @@ def layer_reader(product: Path) -> Callable[[str], NDArray[Any] | None]:
         return read_layer(product, name) if path.exists() else None
 
     return read
+
+
+def grid_of_layer(product: Path, name: str) -> Grid:
+    """The grid that a product's layer lies on."""
+    with rasterio.open(product / LAYER_FOLDER / f"{name}.tif") as file:
+        affine, rows, columns = file.transform, file.height, file.width
+    return Grid(affine.c, affine.f, affine.a, -affine.e, rows, columns)

@@ -6,7 +6,6 @@ import base64
 import hashlib
 import json
 from collections.abc import Sequence
-from dataclasses import dataclass
 from importlib.resources import files
 from pathlib import Path
 from typing import Any
@@ -18,11 +17,10 @@ from markupsafe import Markup
 
 from gridcool.products.failure import output_errors
 from gridcool.products.ramps import MISSING, ramp
+from gridcool.products.report.columns import COLUMNS, MOST_ROWS, columns_of, rows_of
 from gridcool.products.report.facts import ReportFacts
 from gridcool.products.report.shapes import drawing
 from gridcool.products.report.words import (
-    chance,
-    facing,
     headline,
     listed,
     number,
@@ -31,43 +29,12 @@ from gridcool.products.report.words import (
     unit,
 )
 
-MOST_ROWS = 300
 RANKED_BY = {
     "suitability": "suitability, the weighted mean of the criteria",
     "rejected_flux": "the mean flux that a square metre of panel rejects",
 }
 
 
-@dataclass(frozen=True)
-class Column:
-    """A column of the report's tables: heading, unit, what it reads, and how it is shown."""
-
-    name: str
-    unit: str
-    source: str
-    digits: int = 3
-    text: bool = False
-
-
-COLUMNS = (
-    Column("Rank", "", "rank"),
-    Column("Region", "", "region", text=True),
-    Column("Rank from–to", "90 %", "rank_low"),
-    Column("Chance", "among the first", "chance_top"),
-    Column("Suitability", "0 to 1", "suitability_mean"),
-    Column("Flux", "W m⁻²", "rejected_flux_mean"),
-    Column("±", "W m⁻²", "flux_uncertainty", 2),
-    Column("Panel", "", "tilt", text=True),
-    Column("Eligible", "km²", "eligible_km2"),
-    Column("of area", "", "eligible_share"),
-    Column("Power", "TW", "rejected_power_tw"),
-    Column("CO₂ standing", "Mt, once", "co2e_standing_mt"),
-    Column("CO₂ over 100 years", "Mt per year", "co2e_100yr_mt_per_year"),
-    Column("Energy payback", "days", "energy_payback_days"),
-    Column("Cost per tonne", "100-year view", "cost_per_tonne_low", text=True),
-    Column("Low rays", "h per year", "low_ray_hours"),
-    Column("Most is lost to", "", "main_exclusion", text=True),
-)
 #: What the picture of the regions can be coloured by, with its unit.
 SHADES = {
     "suitability_mean": "",
@@ -112,9 +79,9 @@ def render(facts: ReportFacts) -> str:
         "cover_percent": percent(facts.assumptions.ground_cover),
         "reflect_percent": percent(facts.assumptions.reflectance),
         "answer": None if facts.regions is None else headline(facts.regions, facts.assumptions),
-        "heads": _columns(facts),
-        "region_rows": _rows(facts, facts.regions),
-        "zone_rows": _rows(facts, facts.zones),
+        "heads": columns_of(facts),
+        "region_rows": rows_of(facts, facts.regions),
+        "zone_rows": rows_of(facts, facts.zones),
         "pictures": [_picture(each) for each in facts.pictures],
         "layer_rows": [
             (
@@ -136,60 +103,6 @@ def render(facts: ReportFacts) -> str:
 def _asset(name: str) -> str:
     folder = files("gridcool") / "products" / "report"
     return (folder / name).read_text(encoding="utf-8")
-
-
-def _columns(facts: ReportFacts) -> list[Column]:
-    """Columns that say something: no suitability where there are no criteria."""
-    tables = [table for table in (facts.regions, facts.zones) if table is not None]
-    kept = []
-    for column in COLUMNS:
-        held = [table[column.source] for table in tables]
-        empty = all(values.isna().all() or (values == "").all() for values in held)
-        if not empty or column.source in ("rank", "region"):
-            kept.append(column)
-    return kept
-
-
-def _rows(facts: ReportFacts, table: pd.DataFrame | None) -> list[dict[str, Any]]:
-    if table is None:
-        return []
-    columns = _columns(facts)
-    return [
-        {
-            "first": not pd.isna(row["rank"]) and row["rank"] <= facts.assumptions.top,
-            "cells": [
-                {"shown": _shown(column, row), "text": column.text, "value": _value(column, row)}
-                for column in columns
-            ],
-        }
-        for row in table.head(MOST_ROWS).to_dict("records")
-    ]
-
-
-def _shown(column: Column, row: dict[Any, Any]) -> str:
-    value = row[column.source]
-    if column.source == "rank_low":
-        return ranks(value, row["rank_high"])
-    if column.source == "chance_top":
-        return chance(value)
-    if column.source == "eligible_share":
-        return percent(value)
-    if column.source == "tilt":
-        return facing(value, row["azimuth"])
-    if column.source == "cost_per_tonne_low":
-        high = row["cost_per_tonne_high"]
-        return f"{number(value, 2)} to {number(high, 2)}" if not pd.isna(value) else number(value)
-    if column.text:
-        return str(value)
-    if column.source == "rank":
-        return number(None) if pd.isna(value) else str(int(value))
-    return number(value, column.digits)
-
-
-def _value(column: Column, row: dict[Any, Any]) -> str:
-    """What the browser sorts by."""
-    value = row[column.source]
-    return "" if column.text or pd.isna(value) else repr(float(value))
 
 
 def _picture(picture: Any) -> dict[str, str]:
