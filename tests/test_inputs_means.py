@@ -180,6 +180,23 @@ def test_years_in_disorder_are_still_years(tmp_path: Path) -> None:
     np.testing.assert_allclose(expected, two.read_standard_error(rows), rtol=1e-5, atol=1e-9)
 
 
+@pytest.mark.parametrize("in_memory", [0, 10**9])
+def test_months_of_one_year_tell_no_spread(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, in_memory: int
+) -> None:
+    """Eighteen steps: two years of the first six months, one of the others."""
+    monkeypatch.setattr(scratch, "IN_MEMORY", in_memory)
+    values = drawn(18)
+    steps = np.arange(18)
+    spec = write(tmp_path / "a.nc", steps, "months since 2001-01-01", values, (1, *SHAPE))
+    field = open_field(spec)
+    found = field.read_standard_error(slice(0, SHAPE[0]))
+    assert np.isnan(found[6:]).all()
+    assert np.isfinite(found[:6]).mean() > 0.7
+    later = field.read(slice(0, SHAPE[0]))[6:]
+    np.testing.assert_allclose(later, values[6:12, ::-1, ::-1], rtol=1e-6)
+
+
 def test_no_room_for_temporary_data_is_said(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:

@@ -8,6 +8,7 @@ import netCDF4
 import numpy as np
 import pytest
 
+from gridcool.cli import main
 from gridcool.errors import InputDataError
 from gridcool.inputs.load import describe
 from gridcool.inputs.opening import open_file
@@ -112,3 +113,20 @@ def test_whole_real_files_are_not_refused() -> None:
             seen += file.read(3) == b"CDF"
         open_file(path)
     assert seen > 5
+
+
+def test_the_program_ends_with_the_code_of_bad_input(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    path = tmp_path / "albedo.nc"
+    size = write(path, "NETCDF3_64BIT_OFFSET", "records")
+    with path.open("r+b") as file:
+        file.truncate(size // 2)
+    settings = tmp_path / "project.toml"
+    names = ("albedo", "cloud_fraction", "temperature_range")
+    inputs = "".join(f'[inputs.{name}]\npath = "albedo.nc"\n' for name in names)
+    settings.write_text(f'[job]\noutput = "out"\n{inputs}', encoding="utf-8")
+    assert main(["check", str(settings)]) == 3
+    said = capsys.readouterr().err
+    assert "albedo.nc" in said
+    assert "cut off" in said

@@ -169,6 +169,9 @@ class MonthlyMeans:
                     values = self._unpack(raw[index][..., within, :])
                     if month not in several:
                         self._write(kept, month, part, columns, values)
+                        if self._errors is not None:  # one year tells no spread
+                            unknown = np.full_like(values, np.nan)
+                            self._write(self._errors, month, part, columns, unknown)
                         continue
                     key = month, part.start
                     if key not in sums:
