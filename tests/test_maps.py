@@ -122,6 +122,13 @@ def test_the_coast_is_at_hand_offline() -> None:
     assert inland > 5
 
 
+def test_no_coast_runs_across_the_map() -> None:
+    longest = max(
+        np.abs(np.diff(shapely.get_coordinates(line)[:, 0])).max() for line in coastline()
+    )
+    assert longest < 20
+
+
 def test_coasts_past_the_antimeridian(tmp_path: Path) -> None:
     across = Grid(170.0, -10.0, 0.5, 0.5, 40, 50)  # to 195° E
     pictures = draw_maps(product(tmp_path, across), across, LAYERS, Surroundings())

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import shutil
+import subprocess
 from pathlib import Path
 from xml.etree import ElementTree as ET
 
 import numpy as np
 import pytest
+import rasterio
 from invented_layers import ATTRIBUTES, GRIDS, invented_layers
 
 from gridcool.products.layers import write_layers
@@ -35,8 +38,8 @@ def entries(path: Path) -> list[dict[str, str]]:
 
 def test_every_layer_has_a_style(product: Path) -> None:
     written = write_styles(product, layer_variables())
-    assert [path.stem for path in written] == list(layer_variables())
-    for path in written:
+    assert [path.stem for path in written[::2]] == list(layer_variables())
+    for path in written[::2]:
         found = entries(path)
         quantities = [float(each["quantity"]) for each in found]
         assert quantities == sorted(quantities)
@@ -55,6 +58,21 @@ def test_ramps_span_the_values_with_their_unit(product: Path) -> None:
     compass = entries(product / "styles" / "azimuth.sld")
     assert (float(compass[0]["quantity"]), float(compass[-1]["quantity"])) == (0.0, 360.0)
     assert compass[0]["color"] == compass[-1]["color"]
+
+
+@pytest.mark.skipif(shutil.which("gdaldem") is None, reason="no gdaldem on this machine")
+def test_gdal_paints_with_the_colour_tables(product: Path, tmp_path: Path) -> None:
+    write_styles(product, layer_variables())
+    painted = tmp_path / "painted.tif"
+    layer = product / "layers" / "rejected_flux.tif"
+    table = product / "styles" / "rejected_flux.txt"
+    command = ["gdaldem", "color-relief", "-alpha", str(layer), str(table), str(painted)]
+    subprocess.run(command, check=True, capture_output=True)
+    with rasterio.open(layer) as source, rasterio.open(painted) as file:
+        values, colours = source.read(1), file.read()
+    assert (colours[3][np.isnan(values)] == 0).all()
+    highest = np.unravel_index(np.nanargmax(values), values.shape)
+    assert tuple(colours[:3, highest[0], highest[1]]) == ramp("flux").colours(9)[-1]
 
 
 def test_flags_and_classes_have_names(product: Path) -> None:

@@ -150,4 +150,11 @@ def coastline() -> Any:
     """The Earth's coasts at 1:50 million, an array of lines in degrees."""
     with as_file(files("gridcool") / "products" / "coastline.json") as path:
         land = pyogrio.read_dataframe(path)
-    return shapely.boundary(shapely.get_parts(land.geometry.to_numpy()))
+    rings = shapely.get_rings(shapely.get_parts(land.geometry.to_numpy()))
+    pieces = []
+    for ring in rings:
+        points = shapely.get_coordinates(ring)
+        # Rings jump from 180 to -180 where land lies across: no coast runs along there.
+        jumps = np.flatnonzero(np.abs(np.diff(points[:, 0])) > 180) + 1
+        pieces += [part for part in np.split(points, jumps) if len(part) > 1]
+    return np.array([shapely.LineString(part) for part in pieces])

@@ -26,6 +26,7 @@ KINDS = {
     ".png": ("image/png", "overview"),
     ".html": ("text/html", "overview"),
     ".json": ("application/json", "metadata"),
+    ".txt": ("text/plain", "metadata"),
 }
 SHA256_MULTIHASH = "1220"  # the function's number and the digest's length, as multihash has it
 

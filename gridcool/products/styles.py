@@ -1,4 +1,8 @@
-"""OGC Styled Layer Descriptors (SLD 1.0.0) for the layers and the polygons."""
+"""Styles: OGC Styled Layer Descriptors (SLD 1.0.0), and colours as text for GDAL and its users.
+
+Not every GIS reads a descriptor of a raster; most take a table of values and colours, one a line,
+as ``gdaldem color-relief`` does.
+"""
 
 from __future__ import annotations
 
@@ -38,7 +42,7 @@ def write_styles(product: Path, layers: Mapping[str, LayerVariable]) -> list[Pat
     Returns
     -------
     list of Path
-        ``styles/<layer>.sld``
+        ``styles/<layer>.sld`` and ``styles/<layer>.txt``, in turn.
 
     Raises
     ------
@@ -49,8 +53,9 @@ def write_styles(product: Path, layers: Mapping[str, LayerVariable]) -> list[Pat
     written = []
     for name, layer in layers.items():
         path = folder / f"{name}.sld"
-        _write(_raster_style(layer, *_span(product, layer)), path)
-        written.append(path)
+        stops = _stops(layer, *_span(product, layer))
+        _write(_raster_style(layer, stops), path)
+        written += [path, _write_colours(stops, folder / f"{name}.txt")]
     return written
 
 
@@ -79,10 +84,13 @@ def write_polygon_style(
         rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
         label = f"{edges[number]:.4g} to {edges[number + 1]:.4g} {unit}".rstrip()
         ET.SubElement(rule, f"{{{SLD}}}Name").text = label
-        both = ET.SubElement(ET.SubElement(rule, f"{{{OGC}}}Filter"), f"{{{OGC}}}And")
-        _compare(both, "PropertyIsGreaterThanOrEqualTo", column, edges[number])
-        kind = "PropertyIsLessThanOrEqualTo" if last else "PropertyIsLessThan"
-        _compare(both, kind, column, edges[number + 1])
+        # The outermost classes are open, so that no rounding of a limit leaves out the extremes.
+        found = ET.SubElement(rule, f"{{{OGC}}}Filter")
+        between = found if number == 0 or last else ET.SubElement(found, f"{{{OGC}}}And")
+        if number > 0:
+            _compare(between, "PropertyIsGreaterThanOrEqualTo", column, edges[number])
+        if not last:
+            _compare(between, "PropertyIsLessThan", column, edges[number + 1])
         _fill(rule, colour)
     rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
     ET.SubElement(rule, f"{{{SLD}}}Name").text = "nothing eligible"
@@ -94,7 +102,28 @@ def write_polygon_style(
     return path
 
 
-def _raster_style(layer: LayerVariable, low: float, high: float) -> ET.Element:
+def _stops(layer: LayerVariable, low: float, high: float) -> list[tuple[float, str, Colour]]:
+    """Values with their label and colour."""
+    if layer.is_whole:
+        return _named_values(layer)
+    unit = "" if layer.units == "1" else f" {layer.units}"
+    return [
+        (float(value), f"{value:.3g}{unit}", colour)
+        for value, colour in zip(
+            np.linspace(low, high, STEPS), ramp(layer.ramp).colours(STEPS), strict=True
+        )
+    ]
+
+
+def _write_colours(stops: Sequence[tuple[float, str, Colour]], path: Path) -> Path:
+    """Value, red, green, blue, opacity and label, one a line."""
+    lines = [f"{value!r} {r} {g} {b} 255 {label}" for value, label, (r, g, b) in stops]
+    with output_errors(path):
+        path.write_text("\n".join([*lines, "nv 0 0 0 0 missing"]) + "\n", encoding="utf-8")
+    return path
+
+
+def _raster_style(layer: LayerVariable, stops: Sequence[tuple[float, str, Colour]]) -> ET.Element:
     root, rules = _named(layer.name, layer.long_name)
     rule = ET.SubElement(rules, f"{{{SLD}}}Rule")
     symbolizer = ET.SubElement(rule, f"{{{SLD}}}RasterSymbolizer")
@@ -103,16 +132,9 @@ def _raster_style(layer: LayerVariable, low: float, high: float) -> ET.Element:
     grey = ET.SubElement(channel, f"{{{SLD}}}GrayChannel")
     ET.SubElement(grey, f"{{{SLD}}}SourceChannelName").text = "1"
     colours = ET.SubElement(symbolizer, f"{{{SLD}}}ColorMap")
-    if layer.is_whole:
-        colours.set("type", "values")
-        for value, label, colour in _named_values(layer):
-            _entry(colours, value, label, colour)
-        return root
-    colours.set("type", "ramp")
-    unit = "" if layer.units == "1" else f" {layer.units}"
-    values = np.linspace(low, high, STEPS)
-    for value, colour in zip(values, ramp(layer.ramp).colours(STEPS), strict=True):
-        _entry(colours, float(value), f"{value:.3g}{unit}", colour)
+    colours.set("type", "values" if layer.is_whole else "ramp")
+    for value, label, colour in stops:
+        _entry(colours, value, label, colour)
     return root
 
 

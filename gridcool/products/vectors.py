@@ -15,6 +15,7 @@ import shapely
 from gridcool.products.failure import output_errors
 
 CRS = "EPSG:4326"
+VERSION = "1.2"  # which older GIS read without a warning
 CHANGED = "1970-01-01T00:00:00.000Z"  # the format stamps every file; a fixed time keeps it the same
 
 
@@ -61,6 +62,7 @@ def write_polygons(
                 geometry_type="MultiPolygon",
                 layer_metadata={"DESCRIPTION": description},
                 layer_options={"DESCRIPTION": description},
+                dataset_options={"VERSION": VERSION},
             )
         except BaseException:
             path.unlink(missing_ok=True)
