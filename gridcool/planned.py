@@ -36,7 +36,7 @@ from gridcool.planning.suitability import (
 )
 from gridcool.planning.target import Target, reach_target
 from gridcool.planning.zones import find_zones
-from gridcool.variables import Flag, LayerVariable, layer_variables
+from gridcool.variables import Flag, LayerVariable, flag_words, layer_variables
 
 Reader = Callable[[str], NDArray[Any] | None]
 
@@ -121,11 +121,14 @@ def declarations(settings: Settings) -> dict[str, LayerVariable]:
         found |= {name: table[name] for name in ("suitability", "suitability_uncertainty")}
     classes = classes_of(settings)
     if classes:
-        words = [Flag(0, "none", "excluded, or below every class")]
-        for number, each in enumerate(classes, start=1):
-            word = "_".join(each.name.split()).lower()
-            words.append(Flag(number, word, f"{each.name}: suitability of at least {each.above:g}"))
-        found["suitability_class"] = replace(table["suitability_class"], classes=tuple(words))
+        declared = table["suitability_class"]
+        none = declared.classes[0]
+        words = flag_words([each.name for each in classes], "class", [none.meaning])
+        own = [
+            Flag(number, word, f"{each.name}: suitability of at least {each.above:g}")
+            for number, (word, each) in enumerate(zip(words, classes, strict=True), start=1)
+        ]
+        found["suitability_class"] = replace(declared, classes=(none, *own))
     return found
 
 

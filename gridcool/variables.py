@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
@@ -115,6 +116,28 @@ def layer_variables() -> Mapping[str, LayerVariable]:
 def engine_layers() -> list[str]:
     """Names of the layers that the engine makes, in the order of the table."""
     return [name for name, layer in layer_variables().items() if layer.made_by == "engine"]
+
+
+def flag_words(texts: Sequence[str], fallback: str, taken: Iterable[str] = ()) -> list[str]:
+    """A word for each text that CF allows among flag meanings, each used once.
+
+    Parameters
+    ----------
+    texts : sequence of str
+        Names as people write them.
+    fallback : str
+        Stands, with the text's number, for a text without any Latin letter or digit.
+    taken : iterable of str
+        Words that are used already.
+    """
+    words, used = [], set(taken)
+    for number, text in enumerate(texts, start=1):
+        word = re.sub(r"[^A-Za-z0-9]+", "_", text).strip("_").lower() or f"{fallback}_{number}"
+        while word in used:
+            word = f"{word}_{number}"
+        used.add(word)
+        words.append(word)
+    return words
 
 
 def flag_value(layer: str, meaning: str) -> int:

@@ -7,11 +7,15 @@ from typing import Any
 
 import pytest
 from cf_units import Unit
+from hypothesis import given
+from hypothesis import strategies as st
 
 from gridcool.variables import (
     InputVariable,
     LayerVariable,
+    engine_layers,
     flag_value,
+    flag_words,
     input_variables,
     layer_variables,
 )
@@ -105,6 +109,33 @@ def test_flags_are_distinct_bits_that_fit_sixteen(layer: LayerVariable) -> None:
     assert all(re.fullmatch(r"[A-Za-z0-9_.+@-]+", meaning) for meaning in meanings)
     assert all(flag.description for flag in layer.flags)
     assert [flag_value(layer.name, meaning) for meaning in meanings] == values
+
+
+@pytest.mark.parametrize("layer", [each for each in LAYERS if each.classes], ids=name_of)
+def test_classes_count_up_from_none(layer: LayerVariable) -> None:
+    assert [each.value for each in layer.classes] == list(range(len(layer.classes)))
+    assert layer.classes[0].meaning == "none"
+    assert not layer.flags
+
+
+def test_the_engine_is_not_asked_for_what_planning_makes() -> None:
+    planned = {"exclusion", "suitability", "suitability_uncertainty", "suitability_class"}
+    assert {layer.name for layer in LAYERS} - set(engine_layers()) == planned
+
+
+def test_words_of_flags_are_legal_and_used_once() -> None:
+    texts = ["very good!", "Very-good", "水", "none", "very good 2", "A, B\nand C"]
+    words = flag_words(texts, "class", ["none"])
+    assert words == [
+        *("very_good", "very_good_2", "class_3", "none_4", "very_good_2_5", "a_b_and_c")
+    ]
+
+
+@given(st.lists(st.text(), max_size=15))
+def test_words_of_any_texts(texts: list[str]) -> None:
+    words = flag_words(texts, "rule", ["no_result"])
+    assert len({*words, "no_result"}) == len(texts) + 1
+    assert all(re.fullmatch(r"[a-z0-9_]+", word) for word in words)
 
 
 def test_unknown_flags_are_no_flags() -> None:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import difflib
-import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal
@@ -13,7 +12,7 @@ import xarray as xr
 
 from gridcool.errors import SettingsError
 from gridcool.physics.sun import month_weights
-from gridcool.variables import Flag
+from gridcool.variables import Flag, flag_words
 
 NO_RESULT = Flag(1, "no_result", "no flux, or no value of a criterion, is known here")
 MOST_RULES = 15  # with the bit above, what sixteen bits hold
@@ -57,13 +56,13 @@ def exclusion_flags(rules: Sequence[ExclusionRule]) -> tuple[Flag, ...]:
             f"There are {len(rules)} [[exclude]] rules and at most {MOST_RULES} can be told apart; "
             "join some into one input layer."
         )
-    flags, taken = [NO_RESULT], {NO_RESULT.meaning}
-    for number, rule in enumerate(rules, start=1):
-        word = re.sub(r"[^A-Za-z0-9]+", "_", rule.reason).strip("_").lower() or f"rule_{number}"
-        word = word if word not in taken else f"{word}_{number}"
-        taken.add(word)
-        flags.append(Flag(1 << number, word, rule.reason))
-    return tuple(flags)
+    reasons = [rule.reason for rule in rules]
+    words = flag_words(reasons, "rule", [NO_RESULT.meaning])
+    own = [
+        Flag(1 << number, word, reason)
+        for number, (word, reason) in enumerate(zip(words, reasons, strict=True), start=1)
+    ]
+    return (NO_RESULT, *own)
 
 
 def exclusion_layer(
