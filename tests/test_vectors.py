@@ -52,6 +52,21 @@ def test_names_come_back_as_they_are(path: Path) -> None:
     assert shapely.area(found.geometry.to_numpy()).tolist() == pytest.approx([0.5] * 7)
 
 
+def test_ranks_are_whole_numbers_or_null(path: Path) -> None:
+    """A GIS shows rank 1, not 1.0, and nothing at all where nothing is eligible."""
+    with sqlite3.connect(path) as file:
+        kept = file.execute("SELECT rank, typeof(rank), rejected_flux_mean FROM regions").fetchall()
+    assert [row[:2] for row in kept] == [(n, "integer") for n in range(1, 7)] + [(None, "null")]
+    assert kept[6][2] is None
+    assert next(iter(pyogrio.read_info(path)["ogr_types"])) == "OFTInteger64"
+
+
+def test_the_table_given_is_left_as_it_was(tmp_path: Path) -> None:
+    frame = FRAME.copy()
+    write_polygons(frame, SHAPES, tmp_path / "a.gpkg", "regions", "Invented regions")
+    pd.testing.assert_frame_equal(frame, FRAME)
+
+
 def test_only_what_the_format_asks_for(path: Path) -> None:
     """No table of anybody's styles; the layer has a description."""
     with sqlite3.connect(path) as file:
@@ -71,14 +86,16 @@ def test_another_build_of_gdal_reads_it(path: Path) -> None:
     assert "Geometry: Multi Polygon" in told
 
 
-def test_the_same_contents_every_time(path: Path, tmp_path: Path) -> None:
+def test_the_same_bytes_every_time(path: Path, tmp_path: Path) -> None:
     again = tmp_path / "again.gpkg"
     write_polygons(FRAME, SHAPES, again, "regions", "Invented regions")
-    dumps = []
-    for each in (path, again):
-        with sqlite3.connect(each) as file:
-            dumps.append(file.execute("SELECT last_change FROM gpkg_contents").fetchall())
-    assert dumps[0] == dumps[1] == [("1970-01-01T00:00:00.000Z",)]
+    assert again.read_bytes() == path.read_bytes()
+    with sqlite3.connect(again) as file:
+        changed = file.execute("SELECT last_change FROM gpkg_contents").fetchall()
+    assert changed == [("1970-01-01T00:00:00.000Z",)]
+    # Not of the clock alone: another table gives other bytes.
+    write_polygons(FRAME.head(6), SHAPES[:6], again.with_name("b.gpkg"), "regions", "Invented")
+    assert again.with_name("b.gpkg").read_bytes() != path.read_bytes()
 
 
 def test_parts_and_nothing(tmp_path: Path) -> None:

@@ -42,15 +42,7 @@ def write_polygons(
     """
     # All of one kind, or a GIS would call the layer a collection.
     whole = [_multi(shape) for shape in shapes]
-    table = frame.copy()
-    for column in table.columns:
-        if isinstance(table[column].dtype, pd.Int64Dtype):
-            table[column] = (
-                table[column].astype("float64")
-                if table[column].isna().any()
-                else (table[column].astype("int64"))
-            )
-    data = geopandas.GeoDataFrame(table, geometry=whole, crs=CRS)
+    data = geopandas.GeoDataFrame(frame, geometry=whole, crs=CRS)
     errors = (OSError, pyogrio.errors.DataSourceError, pyogrio.errors.FeatureError)
     with output_errors(path, errors), _fixed_time():
         try:
