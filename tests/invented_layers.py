@@ -51,11 +51,12 @@ def invented_values(grid: Grid, name: str) -> np.ndarray:
     rng = np.random.default_rng(list(name.encode()))
     months = (layer.count,) if layer.count > 1 else ()
     if layer.is_flags:
-        chosen = rng.integers(0, 1024, size=grid.shape).astype(np.uint16)
-        chosen[: grid.rows // 2] = 4
+        every = sum(flag.value for flag in layer.flags)
+        chosen = rng.integers(0, every + 1, size=grid.shape).astype(np.uint16)
+        chosen[: grid.rows // 2] = min(4, every)
         return chosen
     if layer.classes:
-        return rng.integers(0, 4, size=grid.shape).astype(np.uint8)
+        return rng.integers(0, len(layer.classes), size=grid.shape).astype(np.uint8)
     if name == "azimuth":
         # North, from either side: a mean of such angles would look south.
         values = np.where(rng.random(grid.shape) < 0.5, 1.0, 359.0) + rng.random(grid.shape)

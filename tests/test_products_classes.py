@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+import shutil
 import subprocess
 import sys
 from dataclasses import replace
@@ -15,7 +17,9 @@ from invented_layers import ATTRIBUTES
 from rasterio.enums import ColorInterp
 from rio_cogeo.cogeo import cog_validate
 
+from gridcool.config import Settings
 from gridcool.grid import Grid
+from gridcool.planned import declarations
 from gridcool.products.layers import write_layers
 from gridcool.products.ramps import MISSING, class_colours
 from gridcool.variables import Flag, layer_variables
@@ -78,6 +82,30 @@ def test_classes_have_colours_and_names(folder: Path) -> None:
     assert valid, errors
 
 
+@pytest.mark.skipif(shutil.which("gdalinfo") is None, reason="no gdalinfo on this machine")
+def test_another_build_of_gdal_finds_colours_and_names(folder: Path) -> None:
+    """The legend of a GIS comes from here."""
+    command = ["gdalinfo", "-json", str(folder / "layers" / "suitability_class.tif")]
+    told = json.loads(subprocess.run(command, check=True, capture_output=True, text=True).stdout)
+    (band,) = told["bands"]
+    assert band["colorInterpretation"] == "Palette"
+    assert [tuple(each[:3]) for each in band["colorTable"]["entries"][:3]] == [
+        MISSING,
+        *class_colours(2),
+    ]
+    as_text = subprocess.run(
+        [command[0], command[2]], check=True, capture_output=True, text=True
+    ).stdout
+    for each in DECLARED["suitability_class"].classes:
+        assert f"{each.value}: {each.description}" in as_text
+
+
+def test_only_classes_have_names_beside_them(folder: Path) -> None:
+    assert [path.name for path in (folder / "layers").glob("*.xml")] == [
+        "suitability_class.tif.aux.xml"
+    ]
+
+
 def test_flags_of_the_settings(folder: Path) -> None:
     with rasterio.open(folder / "layers" / "exclusion.tif") as file:
         tags = file.tags()
@@ -109,6 +137,19 @@ def test_netcdf_says_the_same(folder: Path) -> None:
     assert "All tests passed!" in checked.stdout, checked.stdout
 
 
+@pytest.mark.parametrize(("name", "value"), [("suitability_class", 3), ("exclusion", 8)])
+def test_a_value_without_a_meaning_is_refused(name: str, value: int, tmp_path: Path) -> None:
+    cells = values(name)
+    cells[-1, -1] = value
+    dataset = xr.Dataset(
+        {name: (("latitude", "longitude"), cells)},
+        coords={"latitude": GRID.latitudes, "longitude": GRID.longitudes},
+    )
+    with pytest.raises(ValueError, match=rf"{name} holds values beyond [27],"):
+        write_layers(dataset, GRID, tmp_path, attributes=ATTRIBUTES, declared=DECLARED)
+    assert not list(tmp_path.iterdir())
+
+
 def test_a_layer_that_is_not_declared_is_refused(tmp_path: Path) -> None:
     dataset = xr.Dataset(
         {"unheard_of": (("latitude", "longitude"), values("exclusion"))},
@@ -116,3 +157,24 @@ def test_a_layer_that_is_not_declared_is_refused(tmp_path: Path) -> None:
     )
     with pytest.raises(ValueError, match="not a declared layer"):
         write_layers(dataset, GRID, tmp_path, attributes=ATTRIBUTES, declared=DECLARED)
+
+
+def test_classes_of_the_settings_have_words_that_cf_allows() -> None:
+    names = ["Good", "good!", "Très bien", "最好", "none"]
+    settings = Settings.model_validate(
+        {
+            "job": {"name": "Invented", "output": "out"},
+            "inputs": {"albedo": {"path": "a.nc"}, "cloud_fraction": {"path": "c.nc"}},
+            "grid": {"like": "albedo"},
+            "sky": {"irradiance": "cloud"},
+            "criterion": [{"layer": "rejected_flux", "worst": 40, "best": 160, "weight": 1.0}],
+            "suitability_class": [
+                {"name": name, "above": number / 10} for number, name in enumerate(names)
+            ],
+        }
+    )
+    classes = declarations(settings)["suitability_class"].classes
+    assert [each.meaning for each in classes] == [
+        *("none", "good", "good_2", "tr_s_bien", "class_4", "none_5")
+    ]
+    assert classes[4].description == "最好: suitability of at least 0.3"

@@ -23,6 +23,7 @@ KINDS = {
     ".csv": ("text/csv", "data"),
     ".gpkg": ("application/geopackage+sqlite3", "data"),
     ".sld": ("application/vnd.ogc.sld+xml", "metadata"),
+    ".xml": ("application/xml", "metadata"),
     ".png": ("image/png", "overview"),
     ".html": ("text/html", "overview"),
     ".json": ("application/json", "metadata"),

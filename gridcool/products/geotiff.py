@@ -14,6 +14,7 @@ import threading
 from collections.abc import Callable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
+from xml.etree import ElementTree as ET
 
 import numpy as np
 import rasterio
@@ -134,8 +135,15 @@ class StagedLayer:
         self._on_rows(values.shape[1])
 
     def finish(self, attributes: Mapping[str, str]) -> None:
-        """Set names, units, statistics and tags, and close the file."""
+        """Set names, units, statistics and tags, and close the file.
+
+        Raises
+        ------
+        ValueError
+            If there is a class or flag that the layer's declaration does not have.
+        """
         self.statistics = self._rows.bands()
+        self._refuse_undeclared()
         with output_errors(self.path, GDAL_ERRORS):
             self._file.update_tags(**_dataset_tags(self.layer, attributes))
             for index, name in enumerate(band_names(self.layer), start=1):
@@ -150,6 +158,13 @@ class StagedLayer:
             expected *= np.dtype(layer_dtype(self.layer)).itemsize
             if self.path.stat().st_size < expected:
                 raise OSError("the file is shorter than what was written to it")
+
+    def _refuse_undeclared(self) -> None:
+        """A value without a meaning would look like a result."""
+        named = [each.value for each in self.layer.classes] or [f.value for f in self.layer.flags]
+        most = max(named) if self.layer.classes else sum(named)
+        if self.layer.is_whole and any(band.maximum > most for band in self.statistics):
+            raise ValueError(f"{self.layer.name} holds values beyond {most}, the last declared")
 
     def close(self) -> None:
         """Close the file, finished or not; strips that still arrive are refused."""
@@ -173,6 +188,9 @@ class StagedLayer:
 def convert(staged: StagedLayer, target: Path, threads: int = 1) -> None:
     """Copy a finished staged layer into a Cloud-Optimized GeoTIFF.
 
+    The names of classes go into a small file beside it, since GDAL 3.10 knows no place for them
+    inside a GeoTIFF; a GIS takes its legend from there.
+
     Raises
     ------
     OutputError
@@ -192,9 +210,29 @@ def convert(staged: StagedLayer, target: Path, threads: int = 1) -> None:
                 bigtiff="IF_SAFER",
                 num_threads=threads,
             )
+            if staged.layer.classes:
+                _write_class_names(staged.layer, _beside(target))
         except BaseException:
             target.unlink(missing_ok=True)
+            _beside(target).unlink(missing_ok=True)
             raise
+
+
+def _beside(target: Path) -> Path:
+    """Where GDAL looks for what a raster's own format cannot hold."""
+    return target.with_name(f"{target.name}.aux.xml")
+
+
+def _write_class_names(layer: LayerVariable, path: Path) -> None:
+    """Names of the classes, one for each value from 0 up."""
+    root = ET.Element("PAMDataset")
+    band = ET.SubElement(root, "PAMRasterBand", {"band": "1"})
+    names = ET.SubElement(band, "CategoryNames")
+    known = {each.value: each.description for each in layer.classes}
+    for value in range(max(known) + 1):
+        ET.SubElement(names, "Category").text = known.get(value, "")
+    ET.indent(root)
+    path.write_bytes(ET.tostring(root, encoding="utf-8") + b"\n")
 
 
 def _add_overviews(staged: StagedLayer) -> None:
