@@ -14,7 +14,11 @@ from gridcool.variables import input_variables, layer_variables
 
 ROOT = Path(__file__).parents[1]
 README = (ROOT / "README.md").read_text(encoding="utf-8")
-SECTIONS = ("job", "sky", "panel", "worth", "uncertainty", "layers", "compute", "release")
+SECTIONS = (
+    *("job", "sky", "panel", "worth", "uncertainty", "layers", "maps", "suitability"),
+    *("ranking", "compute", "release"),
+)
+UNSET = {"by"}  # keys whose default is that nothing is said
 
 
 @pytest.mark.parametrize("section", SECTIONS)
@@ -22,7 +26,7 @@ def test_reference_settings_show_every_key_with_its_default(section: str) -> Non
     shown = tomllib.loads((ROOT / "configs/reference.toml").read_text(encoding="utf-8"))
     model = Settings.model_fields[section].annotation
     assert model is not None
-    assert shown[section] == model().model_dump()
+    assert shown[section] == {k: v for k, v in model().model_dump().items() if k not in UNSET}
 
 
 def test_reference_settings_load() -> None:
@@ -38,7 +42,7 @@ def test_readme_names_every_command(capsys: pytest.CaptureFixture[str]) -> None:
     with pytest.raises(SystemExit):
         main(["--help"])
     shown = capsys.readouterr().out
-    for command in ("check", "screen", "cell"):
+    for command in ("check", "screen", "refresh", "cell", "compare", "verify", "demo"):
         assert f"    {command} " in shown
         assert f"gridcool {command}" in README
 
