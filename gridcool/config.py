@@ -37,6 +37,9 @@ from gridcool.sections import (
 from gridcool.variables import input_variables
 
 REQUIRED_INPUTS = ("albedo",)
+MOST_CLASSES = 50
+#: What a key with a pattern may look like.
+EXAMPLES = {"scheduler": '"threads" or "tcp://host:8786"', "memory": '"2 GB"'}
 
 
 class Settings(Section):
@@ -94,6 +97,8 @@ class Settings(Section):
         if self.target is not None and self.regions is None:
             found.append("[target] needs [regions]")
         limits = [each.above for each in self.suitability_class]
+        if len(limits) > MOST_CLASSES:
+            found.append(f"there may be at most {MOST_CLASSES} [[suitability_class]]")
         if sorted(set(limits)) != limits:
             found.append("[[suitability_class]] stand from the lowest limit to the highest")
         return found
@@ -165,7 +170,7 @@ def _sentence(error: Any) -> str:
     if error["type"] in ("model_type", "dict_type"):
         return f"{where} is a section with keys of its own: write [{where}] (found {got})."
     if error["type"] == "string_pattern_mismatch":
-        example = '"threads" or "tcp://host:8786"' if where.endswith("scheduler") else '"2 GB"'
+        example = EXAMPLES.get(str(error["loc"][-1]), "a few words on one line")
         return f"{where}: write something like {example} (found {got})."
     if error["type"] == "value_error":
         message = error["msg"].removeprefix("Value error, ")

@@ -8,6 +8,8 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from gridcool.sections import Number, Section, Share
 
+#: Words for people: something, and nothing that no file can hold.
+Words = Annotated[str, Field(min_length=1, max_length=200, pattern=r"^[^\x00-\x1f\x7f]+$")]
 Positive = Annotated[Number, Field(gt=0)]
 
 
@@ -23,7 +25,7 @@ class Exclude(Section):
     """A rule that takes cells out, and why."""
 
     layer: str
-    reason: Annotated[str, Field(min_length=1)]
+    reason: Words
     above: Number | None = None
     below: Number | None = None
     equals: Numbers | None = None
@@ -66,7 +68,7 @@ class Suitability(Section):
 class SuitabilityClass(Section):
     """A named class of suitability, from a lower limit up."""
 
-    name: Annotated[str, Field(min_length=1)]
+    name: Words
     above: Share
 
 

@@ -345,3 +345,11 @@ def test_planning_sections_are_checked(sections: dict[str, Any], words: tuple[st
     message = refused(**sections)
     for each in words:
         assert each in message
+
+
+def test_words_that_no_file_can_hold_are_refused() -> None:
+    for reason in ("", "a\x00b", "a\nb", "x" * 300):
+        rule = {"layer": "slope", "above": 1, "reason": reason}
+        assert "exclude[1].reason" in refused(exclude=[rule])
+    many = [{"name": f"class {n}", "above": n / 60} for n in range(51)]
+    assert "at most 50" in refused(criterion=[CRITERION], suitability_class=many)
