@@ -37,6 +37,13 @@ def regions(count: int, rng: np.random.Generator) -> Pieces:
     return Pieces(np.array(cells), np.array(areas), np.array(ends))
 
 
+def unit_patches(pieces: Pieces) -> csr_array:
+    """What neighbours have in common, of variance about one."""
+    model = replace(MODEL, common_share=0.0)
+    _, shares = error_shares(pieces, np.ones(GRID.shape), GRID, model)
+    return shares
+
+
 def simple_interval(
     values: np.ndarray, everywhere: np.ndarray, by_patch: csr_array, rng: np.random.Generator
 ) -> tuple[np.ndarray, np.ndarray]:
@@ -48,15 +55,24 @@ def simple_interval(
     return low, high
 
 
-def coverage(count: int, noise: float, trials: int, seed: int = 3) -> tuple[float, float, float]:
-    """Share of true ranks inside our interval and the simple one; mean width over the count."""
+def coverage(
+    count: int, noise: float, trials: int, *, smooth: float = 0.5, seed: int = 3
+) -> tuple[float, float, float]:
+    """Share of true ranks inside our interval and the simple one; mean width over the count.
+
+    ``smooth`` is the share of the truth's variance that neighbours have in common.
+    """
     rng = np.random.default_rng(seed)
     inside = inside_simple = width = 0.0
     for trial in range(trials):
         pieces = regions(count, rng)
         spread = rng.uniform(0.5, 1.5, GRID.shape) * noise * 10
         everywhere, by_patch = error_shares(pieces, spread, GRID, MODEL)
-        truth = 100 + 10 * rng.standard_normal(count)
+        own, shared = (
+            rng.standard_normal(count),
+            unit_patches(pieces) @ rng.standard_normal(by_patch.shape[1]),
+        )
+        truth = 100 + 10 * (np.sqrt(1 - smooth) * own + np.sqrt(smooth) * shared)
         error = everywhere * rng.standard_normal()
         error = error + by_patch @ rng.standard_normal(by_patch.shape[1])
         seen = truth + error
@@ -73,11 +89,16 @@ def coverage(count: int, noise: float, trials: int, seed: int = 3) -> tuple[floa
 def main() -> None:
     """Print coverage for several numbers of regions and sizes of noise."""
     trials = int(sys.argv[1]) if len(sys.argv) > 1 else 500
-    print("regions  noise/spread  inside the 90 % interval  simple  mean width / regions")
+    print("regions  noise/spread  smooth  inside the 90 % interval  simple  mean width / regions")
     for count in (5, 12, 30, 100):
         for noise in (0.1, 0.3, 1.0, 2.0):
-            ours, simple, width = coverage(count, noise, trials)
-            print(f"{count:7d}  {noise:12g}  {ours:24.3f}  {simple:6.3f}  {width:.2f}", flush=True)
+            for smooth in (0.0, 0.5, 1.0):
+                ours, simple, width = coverage(count, noise, trials, smooth=smooth)
+                print(
+                    f"{count:7d}  {noise:12g}  {smooth:6g}  {ours:24.3f}  {simple:6.3f}  "
+                    f"{width:.2f}",
+                    flush=True,
+                )
 
 
 if __name__ == "__main__":

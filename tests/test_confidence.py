@@ -9,14 +9,15 @@ from types import ModuleType
 
 import numpy as np
 import pytest
+from scipy.sparse import csr_array
 
 from gridcool.grid import Grid
 from gridcool.planning.confidence import (
     ErrorModel,
     error_shares,
     patches,
-    prior,
     rank_confidence,
+    shrinkage,
 )
 from gridcool.planning.pieces import Pieces
 
@@ -121,16 +122,28 @@ def test_equal_values_without_error_keep_their_order() -> None:
     assert found.low.tolist() == [1, 2, 3]
 
 
-def test_prior_takes_the_noise_out() -> None:
+def test_the_noise_is_taken_out_of_the_spread() -> None:
     values = np.array([0.0, 10.0, 20.0, 30.0, 40.0])
-    seen = values.var(ddof=1)
-    centre, variance = prior(values, 100 * np.eye(5))
-    assert centre == 20
-    assert variance == pytest.approx(seen - 100)
-    _, common = prior(values, np.full((5, 5), 100.0))
-    assert common == pytest.approx(seen)  # an error that all share spreads nothing
-    _, drowned = prior(values, 1e4 * np.eye(5))
-    assert drowned == pytest.approx(seen / 6)
+    seen, none = values.var(ddof=1), csr_array((5, 5))
+    own = csr_array(10 * np.eye(5))
+    assert shrinkage(values, np.zeros(5), own) == pytest.approx(1 - 100 / seen)
+    # An error that all share spreads nothing.
+    assert shrinkage(values, np.full(5, 10.0), none) == pytest.approx(1)
+    assert shrinkage(values, np.zeros(5), csr_array(100 * np.eye(5))) == pytest.approx(1 / 6)
+    assert shrinkage(np.ones(3), np.zeros(3), csr_array((3, 3))) == 1
+    assert shrinkage(np.ones(1), np.ones(1), csr_array((1, 1))) == 1
+
+
+def test_the_first_has_the_best_chance_of_being_first() -> None:
+    """Neighbours err together and a gradient runs over the map: order and chances agree."""
+    regions = pieces(*[[n] for n in range(40)])
+    values = np.linspace(1.0, 0.6, 40)
+    spread = np.full(40, 0.3)
+    found = rank_confidence(values, regions, spread, STRIP, ErrorModel(), top=3)
+    assert found.top[0] > 0.1
+    assert found.top[:3].min() > found.top[-10:].max()
+    assert (found.low <= np.arange(1, 41)).mean() > 0.9
+    assert found.low[0] == 1
 
 
 @pytest.mark.parametrize(("count", "noise"), [(30, 0.3), (30, 1.0), (100, 1.0)])

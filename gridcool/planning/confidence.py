@@ -4,11 +4,12 @@ A cell's estimate is off by its standard uncertainty times √c z₀ + √(1−c
 everywhere and z_p the same within a patch of about the correlation length. Regions of one patch
 therefore err together, and large regions average their patches' errors.
 
-Ranks of noisy values are too far apart, because noise adds to the spread of the values. The true
-values are therefore taken as drawn from a normal distribution whose spread is that of the values
-less that of the errors (empirical Bayes: Efron & Morris 1973, J. Am. Stat. Assoc. 68; for ranks:
-Lin, Louis, Paddock & Ridgeway 2006, Bayesian Analysis 1), and ranks are counted over draws from
-what is then known of them.
+Ranks of noisy values are too sure, because noise adds to the spread of the values. The true values
+are therefore taken as drawn from a normal distribution whose spread is that of the values less that
+of the errors (empirical Bayes: Efron & Morris 1973, J. Am. Stat. Assoc. 68; for ranks: Lin, Louis,
+Paddock & Ridgeway 2006, Bayesian Analysis 1), and ranks are counted over draws from what is then
+known of them. The truth is taken to vary over the map as the errors do, near places alike, so that
+all values are drawn towards their mean by the same share and keep their order.
 """
 
 from __future__ import annotations
@@ -17,7 +18,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import cho_factor, cho_solve
 from scipy.sparse import csr_array
 
 from gridcool.grid import Grid
@@ -90,12 +90,10 @@ def rank_confidence(
     top : int
     """
     everywhere, by_patch = error_shares(pieces, cell_uncertainty, grid, model)
-    covariance = np.outer(everywhere, everywhere) + (by_patch @ by_patch.T).toarray()
-    spread = np.sqrt(np.diag(covariance))
-    ranks = _ranks(values, covariance, everywhere, by_patch, model)
+    ranks = _ranks(values, everywhere, by_patch, model)
     low, high = np.quantile(ranks, INTERVAL, axis=1, method="inverted_cdf")
     return Confidence(
-        spread=spread,
+        spread=_lengths(everywhere, by_patch),
         low=low.astype(np.int64),
         high=high.astype(np.int64),
         top=(ranks <= top).mean(axis=1),
@@ -106,7 +104,10 @@ def mean_spread(
     pieces: Pieces, cell_uncertainty: FloatArray, grid: Grid, model: ErrorModel
 ) -> FloatArray:
     """Standard uncertainty of each region's mean, shape (regions,)."""
-    everywhere, by_patch = error_shares(pieces, cell_uncertainty, grid, model)
+    return _lengths(*error_shares(pieces, cell_uncertainty, grid, model))
+
+
+def _lengths(everywhere: FloatArray, by_patch: csr_array) -> FloatArray:
     squares = everywhere**2 + np.asarray((by_patch**2).sum(axis=1)).ravel()
     return np.asarray(np.sqrt(squares))
 
@@ -152,45 +153,39 @@ def patches(grid: Grid, size_km: float) -> NDArray[np.int32]:
 
 
 def _ranks(
-    values: FloatArray,
-    covariance: FloatArray,
-    everywhere: FloatArray,
-    by_patch: csr_array,
-    model: ErrorModel,
+    values: FloatArray, everywhere: FloatArray, by_patch: csr_array, model: ErrorModel
 ) -> NDArray[np.int32]:
     """Ranks of draws of the true values, shape (regions, draws)."""
     count = len(values)
-    centre, variance = prior(values, covariance)
+    kept = shrinkage(values, everywhere, by_patch)
+    centre = values.mean() + kept * (values - values.mean())
     rng = np.random.default_rng(model.seed)
     ranks = np.empty((count, model.draws), np.int32)
-    known = cho_factor(covariance + variance * np.eye(count)) if variance > 0 else None
-    order = np.arange(1, count + 1, dtype=np.int32)
+    order = np.arange(1, count + 1, dtype=np.int32)[:, None]
     for start in range(0, model.draws, _DRAWS_AT_ONCE):
         size = min(_DRAWS_AT_ONCE, model.draws - start)
         error = everywhere[:, None] * rng.standard_normal(size)
         error += by_patch @ rng.standard_normal((by_patch.shape[1], size))
-        truth = centre + np.sqrt(variance) * rng.standard_normal((count, size))
-        if known is not None:  # a draw made to agree with what was estimated
-            truth += variance * cho_solve(known, values[:, None] - truth - error)
+        truth = centre[:, None] + np.sqrt(kept) * error
         best_first = np.argsort(-truth, axis=0, kind="stable")
-        np.put_along_axis(
-            ranks[:, start : start + size],
-            best_first,
-            np.broadcast_to(order[:, None], (count, size)),
-            0,
-        )
+        places = np.broadcast_to(order, (count, size))
+        np.put_along_axis(ranks[:, start : start + size], best_first, places, 0)
     return ranks
 
 
-def prior(values: FloatArray, covariance: FloatArray) -> tuple[float, float]:
-    """Mean and variance of the true values, by moments.
+def shrinkage(values: FloatArray, everywhere: FloatArray, by_patch: csr_array) -> float:
+    """Share of the estimates' spread that is the truth's, by moments.
 
     The spread of the estimates is that of the truth plus that of the errors about their mean.
     """
     count = len(values)
     if count < 2:
-        return float(values.mean()), 0.0
+        return 1.0
     seen = float(values.var(ddof=1))
-    noise = (np.trace(covariance) - covariance.sum() / count) / (count - 1)
+    if seen == 0:
+        return 1.0
+    squares = float((everywhere**2).sum() + (by_patch**2).sum())
+    together = float(everywhere.sum() ** 2 + (by_patch.sum(axis=0) ** 2).sum())
+    noise = (squares - together / count) / (count - 1)
     # Few regions tell little of the spread: never less than what chance may have hidden.
-    return float(values.mean()), max(seen - float(noise), seen / (count + 1))
+    return max(1 - noise / seen, 1 / (count + 1))
