@@ -45,11 +45,11 @@ def unit_patches(pieces: Pieces) -> csr_array:
 
 
 def simple_interval(
-    values: np.ndarray, everywhere: np.ndarray, by_patch: csr_array, rng: np.random.Generator
+    values: np.ndarray, everywhere: np.ndarray, by_node: csr_array, rng: np.random.Generator
 ) -> tuple[np.ndarray, np.ndarray]:
     """Ranks of the values with noise added again."""
     draws = values[:, None] + everywhere[:, None] * rng.standard_normal(MODEL.draws)
-    draws = draws + by_patch @ rng.standard_normal((by_patch.shape[1], MODEL.draws))
+    draws = draws + by_node @ rng.standard_normal((by_node.shape[1], MODEL.draws))
     ranks = (-draws).argsort(axis=0).argsort(axis=0) + 1
     low, high = np.quantile(ranks, (0.05, 0.95), axis=1, method="inverted_cdf")
     return low, high
@@ -67,21 +67,21 @@ def coverage(
     for trial in range(trials):
         pieces = regions(count, rng)
         spread = rng.uniform(0.5, 1.5, GRID.shape) * noise * 10
-        everywhere, by_patch = error_shares(pieces, spread, GRID, MODEL)
+        everywhere, by_node = error_shares(pieces, spread, GRID, MODEL)
         own, shared = (
             rng.standard_normal(count),
-            unit_patches(pieces) @ rng.standard_normal(by_patch.shape[1]),
+            unit_patches(pieces) @ rng.standard_normal(by_node.shape[1]),
         )
         truth = 100 + 10 * (np.sqrt(1 - smooth) * own + np.sqrt(smooth) * shared)
         error = everywhere * rng.standard_normal()
-        error = error + by_patch @ rng.standard_normal(by_patch.shape[1])
+        error = error + by_node @ rng.standard_normal(by_node.shape[1])
         seen = truth + error
         rank = (-truth).argsort().argsort() + 1
         model = replace(MODEL, seed=trial)
         found = rank_confidence(seen, pieces, spread, GRID, model, top=3)
         inside += ((found.low <= rank) & (rank <= found.high)).mean()
         width += (found.high - found.low).mean() / count
-        low, high = simple_interval(seen, everywhere, by_patch, rng)
+        low, high = simple_interval(seen, everywhere, by_node, rng)
         inside_simple += ((low <= rank) & (rank <= high)).mean()
     return inside / trials, inside_simple / trials, width / trials
 

@@ -6,22 +6,24 @@ import importlib.util
 from dataclasses import replace
 from pathlib import Path
 from types import ModuleType
+from typing import Any
 
 import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 from scipy.sparse import csr_array
 
 from gridcool.grid import Grid
 from gridcool.planning.confidence import (
     ErrorModel,
+    Nodes,
     error_shares,
-    patches,
     rank_confidence,
     shrinkage,
 )
 from gridcool.planning.pieces import Pieces
 
-GLOBE = Grid(-180.0, 90.0, 1.0, 1.0, 180, 360)
 STRIP = Grid(0.0, 1.0, 1.0, 1.0, 1, 40)  # along the equator, 111 km a cell
 
 
@@ -41,17 +43,42 @@ def study() -> ModuleType:
     return module
 
 
-def test_patches_are_about_as_wide_as_high_and_cover_the_globe() -> None:
-    patch = patches(GLOBE, 500.0)
-    assert patch.shape == (180 * 360,)
-    areas = np.bincount(patch, weights=np.repeat(GLOBE.row_areas(), 360))
-    assert (areas > 0).all()
-    usual = np.sqrt(np.median(areas)) / 1000
-    assert usual == pytest.approx(500, rel=0.1)
-    assert areas.max() < 2 * np.median(areas)
-    # One patch holds neighbours, and none that is far away.
-    assert patch[90 * 360 + 180] == patch[90 * 360 + 181]
-    assert patch[90 * 360 + 180] != patch[90 * 360 + 190]
+def test_nodes_are_about_evenly_spaced_over_the_globe() -> None:
+    nodes = Nodes.spaced(500.0)
+    sphere = 4 * np.pi * 6371.0**2
+    assert np.sqrt(sphere / nodes.count) == pytest.approx(500, rel=0.05)
+
+
+@given(latitude=st.floats(-90, 90), longitude=st.floats(-180, 540))
+def test_the_local_error_has_the_same_size_everywhere(latitude: float, longitude: float) -> None:
+    nodes = Nodes.spaced(700.0)
+    found = nodes.around(np.array([latitude]), np.array([longitude]))
+    assert sum(float(weight[0]) ** 2 for _, weight in found) == pytest.approx(1)
+    assert all(0 <= int(node[0]) < nodes.count for node, _ in found)
+    # A little to the east it is nearly the same error, across the antimeridian too.
+    near = nodes.around(np.array([latitude]), np.array([longitude + 0.01]))
+    assert correlation(nodes, found, near) > 0.995
+
+
+def correlation(nodes: Nodes, a: list[Any], b: list[Any]) -> float:
+    fields = np.zeros((2, nodes.count))
+    for row, each in zip(fields, (a, b), strict=True):
+        for node, weight in each:
+            row[int(node[0])] += weight[0]
+    return float(fields[0] @ fields[1])
+
+
+def test_errors_part_over_the_correlation_length() -> None:
+    nodes = Nodes.spaced(500.0)
+    here = nodes.around(np.array([2.0]), np.array([20.0]))
+    seen = []
+    for kilometres in (50, 250, 500, 1000, 2000):
+        there = nodes.around(np.array([2.0]), np.array([20.0 + kilometres / 111.2]))
+        seen.append(correlation(nodes, here, there))
+    assert seen[0] > 0.9
+    assert seen == sorted(seen, reverse=True)
+    assert seen[2] < 0.8
+    assert abs(seen[-1]) < 0.05
 
 
 def test_common_errors_add_up_and_local_ones_average() -> None:
@@ -59,25 +86,27 @@ def test_common_errors_add_up_and_local_ones_average() -> None:
     near, wide = [0, 1], list(range(40))
     regions = pieces(near, wide)
     common = ErrorModel(common_share=1.0)
-    everywhere, by_patch = error_shares(regions, spread, STRIP, common)
+    everywhere, by_node = error_shares(regions, spread, STRIP, common)
     assert everywhere.tolist() == pytest.approx([6, 6])
-    assert by_patch.toarray().sum() == 0
+    assert by_node.toarray().sum() == 0
     local = ErrorModel(common_share=0.0, correlation_km=500.0)
-    everywhere, by_patch = error_shares(regions, spread, STRIP, local)
-    total = np.sqrt((by_patch.toarray() ** 2).sum(axis=1))
-    assert total[0] == pytest.approx(6)  # inside one patch nothing averages
-    assert total[1] == pytest.approx(6 / 3, rel=0.15)  # about nine patches of 500 km
+    everywhere, by_node = error_shares(regions, spread, STRIP, local)
+    total = np.sqrt((by_node.toarray() ** 2).sum(axis=1))
+    assert total[0] == pytest.approx(6, rel=0.02)  # near each other nothing averages
+    assert total[1] == pytest.approx(6 / 3, rel=0.25)  # nine times 500 km
     half = ErrorModel(common_share=0.5)
-    everywhere, by_patch = error_shares(regions, spread, STRIP, half)
-    assert np.hypot(everywhere[0], by_patch.toarray()[0].max()) == pytest.approx(6)
+    everywhere, by_node = error_shares(regions, spread, STRIP, half)
+    assert np.hypot(everywhere[0], np.linalg.norm(by_node.toarray()[0])) == pytest.approx(
+        6, rel=0.02
+    )
 
 
 def test_neighbours_share_their_errors() -> None:
     spread = np.full(40, 6.0)
     model = ErrorModel(common_share=0.0, correlation_km=1000.0)
-    _, by_patch = error_shares(pieces([0], [1], [30]), spread, STRIP, model)
-    covariance = (by_patch @ by_patch.T).toarray()
-    assert covariance[0, 1] == pytest.approx(36)
+    _, by_node = error_shares(pieces([0], [1], [30]), spread, STRIP, model)
+    covariance = (by_node @ by_node.T).toarray()
+    assert covariance[0, 1] == pytest.approx(36, rel=0.05)
     assert covariance[0, 2] == 0
 
 
@@ -144,6 +173,8 @@ def test_the_first_has_the_best_chance_of_being_first() -> None:
     assert found.top[:3].min() > found.top[-10:].max()
     assert (found.low <= np.arange(1, 41)).mean() > 0.9
     assert found.low[0] == 1
+    assert (found.low <= np.arange(1, 41)).all()
+    assert (found.high >= np.arange(1, 41)).all()
 
 
 @pytest.mark.parametrize(("count", "noise"), [(30, 0.3), (30, 1.0), (100, 1.0)])

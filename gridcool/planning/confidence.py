@@ -1,8 +1,8 @@
 """How sure ranks are: errors that regions share in part, carried into ranks.
 
-A cell's estimate is off by its standard uncertainty times √c z₀ + √(1−c) z_p, with z₀ the same
-everywhere and z_p the same within a patch of about the correlation length. Regions of one patch
-therefore err together, and large regions average their patches' errors.
+A cell's estimate is off by its standard uncertainty times √c z₀ + √(1−c) z, with z₀ the same
+everywhere and z a smooth field that hangs together over about the correlation length. Neighbours
+therefore err together, and large regions average their errors.
 
 Ranks of noisy values are too sure, because noise adds to the spread of the values. The true values
 are therefore taken as drawn from a normal distribution whose spread is that of the values less that
@@ -28,6 +28,7 @@ FloatArray = NDArray[np.floating]
 KILOMETRES_PER_DEGREE = 111.19  # of a great circle on the sphere of the Earth's area
 INTERVAL = (0.05, 0.95)
 _DRAWS_AT_ONCE = 250
+_CELLS_AT_ONCE = 2_000_000
 
 
 @dataclass(frozen=True)
@@ -89,11 +90,15 @@ def rank_confidence(
     model : ErrorModel
     top : int
     """
-    everywhere, by_patch = error_shares(pieces, cell_uncertainty, grid, model)
-    ranks = _ranks(values, everywhere, by_patch, model)
+    everywhere, by_node = error_shares(pieces, cell_uncertainty, grid, model)
+    ranks = _ranks(values, everywhere, by_node, model)
     low, high = np.quantile(ranks, INTERVAL, axis=1, method="inverted_cdf")
+    # The rank that is told always lies inside.
+    told = np.empty(len(values))
+    told[np.argsort(-values, kind="stable")] = np.arange(1, len(values) + 1)
+    low, high = np.minimum(low, told), np.maximum(high, told)
     return Confidence(
-        spread=_lengths(everywhere, by_patch),
+        spread=_lengths(everywhere, by_node),
         low=low.astype(np.int64),
         high=high.astype(np.int64),
         top=(ranks <= top).mean(axis=1),
@@ -107,57 +112,89 @@ def mean_spread(
     return _lengths(*error_shares(pieces, cell_uncertainty, grid, model))
 
 
-def _lengths(everywhere: FloatArray, by_patch: csr_array) -> FloatArray:
-    squares = everywhere**2 + np.asarray((by_patch**2).sum(axis=1)).ravel()
+def _lengths(everywhere: FloatArray, by_node: csr_array) -> FloatArray:
+    squares = everywhere**2 + np.asarray((by_node**2).sum(axis=1)).ravel()
     return np.asarray(np.sqrt(squares))
 
 
 def error_shares(
     pieces: Pieces, cell_uncertainty: FloatArray, grid: Grid, model: ErrorModel
 ) -> tuple[FloatArray, csr_array]:
-    """Each region's response to the common error and to that of each patch.
+    """Each region's response to the common error and to that of each node of the local one.
 
     Returns
     -------
     everywhere : array, shape (regions,)
-    by_patch : sparse array, shape (regions, patches)
+    by_node : sparse array, shape (regions, nodes)
         Their squares add up to the variance of the region's mean.
     """
-    patch_of = patches(grid, model.correlation_km)
-    spread = np.nan_to_num(cell_uncertainty.ravel()[pieces.cells])
-    patch = patch_of[pieces.cells]
+    nodes = Nodes.spaced(model.correlation_km)
     counts = np.diff(np.concatenate([[0], pieces.ends]))
     region = np.repeat(np.arange(len(pieces.ends)), counts)
-    weight = pieces.areas / np.repeat(pieces.area, counts)
-    shape = (len(pieces.ends), int(patch_of.max()) + 1)
-    whole = csr_array((weight * spread, (region, patch)), shape=shape)
-    whole.sum_duplicates()
-    everywhere = np.asarray(whole.sum(axis=1)).ravel()
-    return np.sqrt(model.common_share) * everywhere, np.sqrt(1 - model.common_share) * whole
+    share = pieces.areas / np.repeat(pieces.area, counts)
+    response = share * np.nan_to_num(cell_uncertainty.ravel()[pieces.cells])
+    everywhere = np.bincount(region, response, minlength=len(pieces.ends))
+    shape = (len(pieces.ends), nodes.count)
+    by_node = csr_array(shape)
+    for start in range(0, len(response), _CELLS_AT_ONCE):
+        part = slice(start, start + _CELLS_AT_ONCE)
+        row, column = np.divmod(pieces.cells[part], grid.columns)
+        for node, weight in nodes.around(grid.latitudes[row], grid.longitudes[column]):
+            values = response[part] * weight
+            by_node = by_node + csr_array((values, (region[part], node)), shape=shape)
+    local = np.sqrt(1 - model.common_share)
+    return np.sqrt(model.common_share) * everywhere, local * by_node
 
 
-def patches(grid: Grid, size_km: float) -> NDArray[np.int32]:
-    """Number of the patch that each cell lies in, shape (rows · columns,).
+@dataclass(frozen=True, eq=False)
+class Nodes:
+    """Places on the globe, about evenly spaced, between which the local error is interpolated.
 
-    Patches are bands of latitude cut into pieces about as wide as they are high.
+    Attributes
+    ----------
+    ring : array of int, shape (bands,)
+        How many nodes stand in each band of latitude, the northernmost first.
     """
-    bands = max(1, round(180 * KILOMETRES_PER_DEGREE / size_km))
-    band = np.minimum(((90 - grid.latitudes) / 180 * bands).astype(int), bands - 1)
-    middle = np.deg2rad(90 - (np.arange(bands) + 0.5) * 180 / bands)
-    around = np.maximum(1, np.round(360 * KILOMETRES_PER_DEGREE * np.cos(middle) / size_km))
-    first = np.concatenate([[0], np.cumsum(around)[:-1]])
-    share = (grid.longitudes % 360) / 360
-    column = np.minimum(share * around[band][:, None], around[band][:, None] - 1).astype(int)
-    number: NDArray[np.int32] = (first[band][:, None] + column).astype(np.int32).ravel()
-    return number
+
+    ring: NDArray[np.int64]
+
+    @staticmethod
+    def spaced(kilometres: float) -> Nodes:
+        """Nodes about so far from each other."""
+        bands = max(2, round(180 * KILOMETRES_PER_DEGREE / kilometres))
+        middle = np.deg2rad(90 - (np.arange(bands) + 0.5) * 180 / bands)
+        length = 360 * KILOMETRES_PER_DEGREE * np.cos(middle)
+        return Nodes(np.maximum(1, np.round(length / kilometres)).astype(np.int64))
+
+    @property
+    def count(self) -> int:
+        """Number of nodes."""
+        return int(self.ring.sum())
+
+    def around(
+        self, latitude: FloatArray, longitude: FloatArray
+    ) -> list[tuple[NDArray[np.int64], FloatArray]]:
+        """The four nodes around each place and their weights, whose squares add up to one."""
+        bands = len(self.ring)
+        first = np.concatenate([[0], np.cumsum(self.ring)[:-1]])
+        down = np.clip((90 - latitude) / 180 * bands - 0.5, 0, bands - 1)
+        upper = np.minimum(down.astype(np.int64), bands - 2)
+        found = []
+        for band, weight in ((upper, 1 - (down - upper)), (upper + 1, down - upper)):
+            along = longitude % 360 / 360 * self.ring[band]
+            west = along.astype(np.int64)
+            for step, part in ((0, 1 - (along - west)), (1, along - west)):
+                found.append((first[band] + (west + step) % self.ring[band], weight * part))
+        length = np.sqrt(sum(weight**2 for _, weight in found))
+        return [(node, weight / length) for node, weight in found]
 
 
 def _ranks(
-    values: FloatArray, everywhere: FloatArray, by_patch: csr_array, model: ErrorModel
+    values: FloatArray, everywhere: FloatArray, by_node: csr_array, model: ErrorModel
 ) -> NDArray[np.int32]:
     """Ranks of draws of the true values, shape (regions, draws)."""
     count = len(values)
-    kept = shrinkage(values, everywhere, by_patch)
+    kept = shrinkage(values, everywhere, by_node)
     centre = values.mean() + kept * (values - values.mean())
     rng = np.random.default_rng(model.seed)
     ranks = np.empty((count, model.draws), np.int32)
@@ -165,7 +202,7 @@ def _ranks(
     for start in range(0, model.draws, _DRAWS_AT_ONCE):
         size = min(_DRAWS_AT_ONCE, model.draws - start)
         error = everywhere[:, None] * rng.standard_normal(size)
-        error += by_patch @ rng.standard_normal((by_patch.shape[1], size))
+        error += by_node @ rng.standard_normal((by_node.shape[1], size))
         truth = centre[:, None] + np.sqrt(kept) * error
         best_first = np.argsort(-truth, axis=0, kind="stable")
         places = np.broadcast_to(order, (count, size))
@@ -173,7 +210,7 @@ def _ranks(
     return ranks
 
 
-def shrinkage(values: FloatArray, everywhere: FloatArray, by_patch: csr_array) -> float:
+def shrinkage(values: FloatArray, everywhere: FloatArray, by_node: csr_array) -> float:
     """Share of the estimates' spread that is the truth's, by moments.
 
     The spread of the estimates is that of the truth plus that of the errors about their mean.
@@ -184,8 +221,8 @@ def shrinkage(values: FloatArray, everywhere: FloatArray, by_patch: csr_array) -
     seen = float(values.var(ddof=1))
     if seen == 0:
         return 1.0
-    squares = float((everywhere**2).sum() + (by_patch**2).sum())
-    together = float(everywhere.sum() ** 2 + (by_patch.sum(axis=0) ** 2).sum())
+    squares = float((everywhere**2).sum() + (by_node**2).sum())
+    together = float(everywhere.sum() ** 2 + (by_node.sum(axis=0) ** 2).sum())
     noise = (squares - together / count) / (count - 1)
     # Few regions tell little of the spread: never less than what chance may have hidden.
     return max(1 - noise / seen, 1 / (count + 1))
