@@ -7,7 +7,7 @@ import itertools
 import numpy as np
 import pytest
 
-from gridcool.products.ramps import CYCLIC, DIVERGING, RAMPS, class_colours, ramp, srgb
+from gridcool.products.ramps import CYCLIC, DIVERGING, RAMPS, class_colours, paler, ramp, srgb
 from gridcool.variables import layer_variables
 
 # Machado, Oliveira & Fernandes (2009), IEEE Trans. Vis. Comput. Graph. 15, severity 1, linear RGB;
@@ -68,6 +68,34 @@ def test_both_sides_of_a_difference_are_told_apart(eye: str) -> None:
     assert (np.diff(light[5:]) < -2).all()
     low, high = np.cbrt(seen[1]), np.cbrt(seen[-2])
     assert np.abs(low - high).max() > 0.15
+
+
+@pytest.mark.parametrize("name", CYCLIC)
+@pytest.mark.parametrize("eye", ["usual", *BLINDNESS])
+def test_both_ways_round_are_told_apart(name: str, eye: str) -> None:
+    """East is as light as west, spring as autumn: hue must do, for colour-blind eyes too.
+
+    Distances in CIE L*a*b*; green against orange, for one, comes to 8 for a protan's eye.
+    """
+    colours = linear(RAMPS[name].colours(13))
+    seen = colours if eye == "usual" else np.clip(colours @ np.array(BLINDNESS[eye]).T, 0, 1)
+    to_xyz = np.array(
+        [[0.4124, 0.3576, 0.1805], [0.2126, 0.7152, 0.0722], [0.0193, 0.1192, 0.9505]]
+    )
+    scaled = seen @ to_xyz.T / np.array([0.95047, 1.0, 1.08883])
+    low = scaled / (3 * (6 / 29) ** 2) + 4 / 29
+    x, y, z = np.where(scaled > (6 / 29) ** 3, np.cbrt(scaled), low).T
+    lab = np.stack([116 * y - 16, 500 * (x - y), 200 * (y - z)], axis=1)
+    apart = np.linalg.norm(lab - lab[::-1], axis=1)
+    assert apart[3] > 60
+    assert (apart[1:6] > 20).all()
+
+
+def test_paler_colours_keep_their_order() -> None:
+    colours = RAMPS["flux"].colours(9)
+    assert paler(colours, 0.0) == colours
+    assert set(paler(colours, 1.0)) == {(255, 255, 255)}
+    assert (np.diff(lightness(linear(paler(colours, 0.6)))) < 0).all()
 
 
 @pytest.mark.parametrize("name", CYCLIC)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import shutil
 import subprocess
+from dataclasses import replace
 from pathlib import Path
 from xml.etree import ElementTree as ET
 
@@ -75,12 +76,40 @@ def test_gdal_paints_with_the_colour_tables(product: Path, tmp_path: Path) -> No
     assert tuple(colours[:3, highest[0], highest[1]]) == ramp("flux").colours(9)[-1]
 
 
-def test_flags_and_classes_have_names(product: Path) -> None:
+def test_values_that_occur_have_names(product: Path) -> None:
+    """A cell may have several bits; a GIS that looks for single ones would leave it clear."""
     write_styles(product, layer_variables())
-    flags = entries(product / "styles" / "input_quality.sld")
-    assert flags[0]["label"] == "nothing to report"
-    assert float(flags[3]["quantity"]) == 4.0
-    assert "blend" in flags[3]["label"]
+    with rasterio.open(product / "layers" / "input_quality.tif") as file:
+        present = np.unique(file.read(1))
+    found = entries(product / "styles" / "input_quality.sld")
+    assert [float(each["quantity"]) for each in found] == present.tolist()
+    declared = {flag.value: flag.description for flag in layer_variables()["input_quality"].flags}
+    for each in found:
+        value = int(float(each["quantity"]))
+        named = [text for bit, text in declared.items() if value & bit]
+        assert each["label"].lower() == ("; ".join(named) or "nothing to report").lower()
+    assert any(int(value).bit_count() > 1 for value in present)
+
+
+def test_tables_have_six_columns(product: Path) -> None:
+    """As GDAL and those that read its tables want them, whatever stands in a label."""
+    layers = dict(layer_variables())
+    flags = tuple(
+        replace(flag, description='near "town", or\nroad') for flag in layers["input_quality"].flags
+    )
+    layers["input_quality"] = replace(layers["input_quality"], flags=flags)
+    written = write_styles(product, layers)
+    for path in written[1::2]:
+        *lines, last = path.read_text(encoding="utf-8").splitlines()
+        assert last == "nan,0,0,0,0,missing"
+        for line in lines:
+            value, *colour, label = line.split(",")
+            assert np.isfinite(float(value))
+            assert all(0 <= int(each) <= 255 for each in colour)
+            assert len(colour) == 4
+            assert label
+    labels = (product / "styles" / "input_quality.txt").read_text(encoding="utf-8")
+    assert 'Near "town"; or road' in labels
 
 
 def test_polygons_by_an_attribute(product: Path) -> None:

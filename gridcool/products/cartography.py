@@ -53,23 +53,27 @@ def size(bounds: Bounds) -> tuple[float, float]:
     """Inches: about the shape of the place, with room for title and legend."""
     if bounds.east - bounds.west >= WIDE:
         return 9.5, 5.9
+    return 7.5, 6.3 * _aspect(bounds) + 1.5
+
+
+def panel_size(bounds: Bounds, rows: int, columns: int) -> tuple[float, float]:
+    """Inches of a sheet of several small maps, with their names, a title and a legend."""
+    width = 11.0 if columns > 2 else 9.5
+    return width, rows * (width / columns * _aspect(bounds) + 0.25) + 1.4
+
+
+def _aspect(bounds: Bounds) -> float:
+    """Height over width on the map."""
+    if bounds.east - bounds.west >= WIDE:
+        return 0.49  # of the equal-area globe
     middle = np.deg2rad((bounds.south + bounds.north) / 2)
     wide = (bounds.east - bounds.west) * np.cos(middle)
-    aspect = float(np.clip((bounds.north - bounds.south) / max(wide, 1e-9), 0.4, 1.5))
-    return 7.5, 6.3 * aspect + 1.5
+    return float(np.clip((bounds.north - bounds.south) / max(wide, 1e-9), 0.4, 1.5))
 
 
 def surround(axes: Any, bounds: Bounds, around: Surroundings) -> None:
     """Draw what every map of a product shows, and set its extent."""
-    if around.coast:
-        axes.add_geometries(
-            _coast_within(bounds), crs=DEGREES, facecolor="none", edgecolor=INK, linewidth=0.5
-        )
-    shapes = [shape for shape in around.outlines if not shape.is_empty]
-    if shapes:
-        axes.add_geometries(
-            shapes, crs=DEGREES, facecolor="none", edgecolor=INK, linewidth=0.8, alpha=0.8
-        )
+    _draw_lines(axes, bounds, around)
     box = {"boxstyle": "circle,pad=0.25", "facecolor": "white", "edgecolor": INK, "linewidth": 0.6}
     for text, longitude, latitude in around.numbers:
         axes.text(
@@ -94,6 +98,27 @@ def surround(axes: Any, bounds: Bounds, around: Surroundings) -> None:
     lines.xlabel_style = lines.ylabel_style = {"size": 7, "color": "#555555"}
     if globe:
         lines.xlabel_style = {"size": 0.1, "color": "none"}  # along a curved edge they collide
+
+
+def surround_panel(axes: Any, bounds: Bounds, around: Surroundings) -> None:
+    """Draw what a small map has room for, coast and outlines, and set its extent."""
+    _draw_lines(axes, bounds, around)
+    if bounds.east - bounds.west >= WIDE:
+        axes.set_global()
+    else:
+        axes.set_extent([bounds.west, bounds.east, bounds.south, bounds.north], crs=DEGREES)
+
+
+def _draw_lines(axes: Any, bounds: Bounds, around: Surroundings) -> None:
+    if around.coast:
+        axes.add_geometries(
+            _coast_within(bounds), crs=DEGREES, facecolor="none", edgecolor=INK, linewidth=0.5
+        )
+    shapes = [shape for shape in around.outlines if not shape.is_empty]
+    if shapes:
+        axes.add_geometries(
+            shapes, crs=DEGREES, facecolor="none", edgecolor=INK, linewidth=0.8, alpha=0.8
+        )
 
 
 def _scale_bar(axes: Any) -> None:

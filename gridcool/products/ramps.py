@@ -7,7 +7,7 @@ told apart), so that order survives colour blindness and grey prints; hue only h
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from types import MappingProxyType
 
@@ -79,9 +79,10 @@ RAMPS: Mapping[str, Ramp] = MappingProxyType(
         ),
         "difference": Ramp(((30, 38, 275), (58, 34, 255), (95, 2, 0), (64, 46, 60), (36, 46, 45))),
         # Round the compass: dark in the north, light in the south, cool in the west, warm in the
-        # east; likewise round the year from January.
-        "compass": Ramp(((32, 30, 300), (60, 44, 45), (92, 18, 95), (60, 24, 215), (32, 30, 300))),
-        "month": Ramp(((32, 30, 300), (60, 34, 150), (92, 18, 95), (60, 44, 45), (32, 30, 300))),
+        # east; round the year from January: cool in spring, warm in autumn. Blue and yellow are
+        # the hues that most colour-blind eyes still tell apart.
+        "compass": Ramp(((32, 30, 300), (60, 44, 72), (92, 18, 95), (60, 34, 255), (32, 30, 300))),
+        "month": Ramp(((32, 30, 300), (60, 34, 255), (92, 18, 95), (60, 44, 72), (32, 30, 300))),
     }
 )
 CYCLIC = ("compass", "month")
@@ -107,3 +108,9 @@ def class_colours(count: int) -> list[Colour]:
     if count == 1:
         return [RAMPS["suitability"].colours(5)[3]]
     return RAMPS["suitability"].colours(count + 1)[1:]
+
+
+def paler(colours: Sequence[Colour], share: float) -> list[Colour]:
+    """The colours with so much white in them, 0 to 1."""
+    mixed = np.round((1 - share) * np.array(colours, float) + share * 255).astype(int)
+    return [(int(r), int(g), int(b)) for r, g, b in mixed]

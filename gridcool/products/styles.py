@@ -1,7 +1,7 @@
 """Styles: OGC Styled Layer Descriptors (SLD 1.0.0), and colours as text for GDAL and its users.
 
-Not every GIS reads a descriptor of a raster; most take a table of values and colours, one a line,
-as ``gdaldem color-relief`` does.
+Not every GIS reads a descriptor of a raster; most take a table of values and colours, one a line
+with commas between, as ``gdaldem color-relief`` does.
 """
 
 from __future__ import annotations
@@ -15,8 +15,9 @@ import rasterio
 from numpy.typing import NDArray
 
 from gridcool.products.failure import output_errors
-from gridcool.products.geotiff import LAYER_FOLDER
-from gridcool.products.ramps import MISSING, SPANS, Colour, class_colours, ramp
+from gridcool.products.geotiff import LAYER_FOLDER, gdal_environment
+from gridcool.products.legends import combinations, hexadecimal
+from gridcool.products.ramps import MISSING, SPANS, Colour, ramp
 from gridcool.variables import LayerVariable
 
 FloatArray = NDArray[np.floating]
@@ -53,7 +54,7 @@ def write_styles(product: Path, layers: Mapping[str, LayerVariable]) -> list[Pat
     written = []
     for name, layer in layers.items():
         path = folder / f"{name}.sld"
-        stops = _stops(layer, *_span(product, layer))
+        stops = _stops(product, layer)
         _write(_raster_style(layer, stops), path)
         written += [path, _write_colours(stops, folder / f"{name}.txt")]
     return written
@@ -102,10 +103,12 @@ def write_polygon_style(
     return path
 
 
-def _stops(layer: LayerVariable, low: float, high: float) -> list[tuple[float, str, Colour]]:
+def _stops(product: Path, layer: LayerVariable) -> list[tuple[float, str, Colour]]:
     """Values with their label and colour."""
     if layer.is_whole:
-        return _named_values(layer)
+        counts = {} if layer.classes else _counts(product, layer)
+        return [(each.value, each.words, each.colour) for each in combinations(layer, counts)]
+    low, high = _span(product, layer)
     unit = "" if layer.units == "1" else f" {layer.units}"
     return [
         (float(value), f"{value:.3g}{unit}", colour)
@@ -116,10 +119,17 @@ def _stops(layer: LayerVariable, low: float, high: float) -> list[tuple[float, s
 
 
 def _write_colours(stops: Sequence[tuple[float, str, Colour]], path: Path) -> Path:
-    """Value, red, green, blue, opacity and label, one a line."""
-    lines = [f"{value!r} {r} {g} {b} 255 {label}" for value, label, (r, g, b) in stops]
+    """Value, red, green, blue, opacity and label, one a line, the last for what is missing.
+
+    Commas in labels become semicolons. The missing is spelt as the layers hold it: where GDAL's own word, "nv", is not known, it would be
+    read as nought.
+    """
+    lines = [
+        f"{float(value)!r},{r},{g},{b},255,{' '.join(label.replace(',', ';').split())}"
+        for value, label, (r, g, b) in stops
+    ]
     with output_errors(path):
-        path.write_text("\n".join([*lines, "nv 0 0 0 0 missing"]) + "\n", encoding="utf-8")
+        path.write_text("\n".join([*lines, "nan,0,0,0,0,missing"]) + "\n", encoding="utf-8")
     return path
 
 
@@ -132,26 +142,24 @@ def _raster_style(layer: LayerVariable, stops: Sequence[tuple[float, str, Colour
     grey = ET.SubElement(channel, f"{{{SLD}}}GrayChannel")
     ET.SubElement(grey, f"{{{SLD}}}SourceChannelName").text = "1"
     colours = ET.SubElement(symbolizer, f"{{{SLD}}}ColorMap")
-    colours.set("type", "values" if layer.is_whole else "ramp")
+    if layer.is_whole:  # not of the standard, but else most servers blend between the entries
+        colours.set("type", "values")
     for value, label, colour in stops:
         _entry(colours, value, label, colour)
     return root
 
 
-def _named_values(layer: LayerVariable) -> list[tuple[float, str, Colour]]:
-    """Values of a layer of whole numbers with their meaning: classes, or single bits."""
-    if layer.classes:
-        colours = [MISSING, *class_colours(len(layer.classes) - 1)]
-        return [
-            (each.value, each.description, colour)
-            for each, colour in zip(layer.classes, colours, strict=True)
-        ]
-    colours = ramp("irradiance").colours(len(layer.flags) + 2)[1:-1]
-    single = [
-        (float(flag.value), flag.description, colour)
-        for flag, colour in zip(layer.flags, colours, strict=True)
-    ]
-    return [(0.0, "nothing to report", (250, 250, 245)), *single]
+def _counts(product: Path, layer: LayerVariable) -> dict[int, int]:
+    """How many cells have each value that occurs in a layer of bits, read block by block."""
+    total = np.zeros(1 << 16, np.int64)
+    with (
+        gdal_environment(),
+        rasterio.open(product / LAYER_FOLDER / f"{layer.name}.tif") as file,
+    ):
+        for _, window in file.block_windows(1):
+            block = file.read(1, window=window)
+            total += np.bincount(block.ravel(), minlength=len(total))
+    return {int(value): int(total[value]) for value in np.flatnonzero(total)}
 
 
 def _span(product: Path, layer: LayerVariable) -> tuple[float, float]:
@@ -180,7 +188,7 @@ def _named(name: str, title: str) -> tuple[ET.Element, ET.Element]:
 
 
 def _entry(parent: ET.Element, value: float, label: str, colour: Colour) -> None:
-    attributes = {"color": _hex(colour), "quantity": repr(float(value)), "label": label}
+    attributes = {"color": hexadecimal(colour), "quantity": repr(float(value)), "label": label}
     ET.SubElement(parent, f"{{{SLD}}}ColorMapEntry", attributes)
 
 
@@ -193,9 +201,9 @@ def _compare(parent: ET.Element, kind: str, column: str, value: float) -> None:
 def _fill(rule: ET.Element, colour: Colour) -> None:
     symbolizer = ET.SubElement(rule, f"{{{SLD}}}PolygonSymbolizer")
     fill = ET.SubElement(symbolizer, f"{{{SLD}}}Fill")
-    _parameters(fill, {"fill": _hex(colour), "fill-opacity": "0.85"})
+    _parameters(fill, {"fill": hexadecimal(colour), "fill-opacity": "0.85"})
     stroke = ET.SubElement(symbolizer, f"{{{SLD}}}Stroke")
-    _parameters(stroke, {"stroke": _hex(OUTLINE), "stroke-width": "0.6"})
+    _parameters(stroke, {"stroke": hexadecimal(OUTLINE), "stroke-width": "0.6"})
 
 
 def _parameters(parent: ET.Element, values: Mapping[str, str]) -> None:
@@ -216,7 +224,3 @@ def _write(root: ET.Element, path: Path) -> None:
     ET.indent(root)
     with output_errors(path):
         ET.ElementTree(root).write(path, encoding="utf-8", xml_declaration=True)
-
-
-def _hex(colour: Sequence[int]) -> str:
-    return "#{:02x}{:02x}{:02x}".format(*colour)
