@@ -121,8 +121,8 @@ def _stops(product: Path, layer: LayerVariable) -> list[tuple[float, str, Colour
 def _write_colours(stops: Sequence[tuple[float, str, Colour]], path: Path) -> Path:
     """Value, red, green, blue, opacity and label, one a line, the last for what is missing.
 
-    Commas in labels become semicolons. The missing is spelt as the layers hold it: where GDAL's own word, "nv", is not known, it would be
-    read as nought.
+    Commas in labels become semicolons. The missing is spelt as the layers hold it: GDAL's own
+    word, "nv", would be read as nought by those who do not know it.
     """
     lines = [
         f"{float(value)!r},{r},{g},{b},255,{' '.join(label.replace(',', ';').split())}"
