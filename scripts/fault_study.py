@@ -3,9 +3,9 @@
     python scripts/fault_study.py [KILLS]
 
 A small invented project is screened, changed, and run again and again; each run is killed at a
-random moment (SIGKILL), half of them runs of `screen` and half of `refresh`. After each kill `current`
-must be a whole release, the old or the new one, and at the end a run must go on to the very data that
-an undisturbed run gives. Then ten runs start at once. Prints how many were tried and survived.
+random moment (SIGKILL), half of them runs of `screen`, half of `refresh`. After each kill `current`
+must be a whole release, the old or the new one, and at the end a run must go on to the very data
+that an undisturbed run gives. Then ten runs start at once. Prints how many were tried and survived.
 """
 
 from __future__ import annotations
