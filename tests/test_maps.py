@@ -17,6 +17,7 @@ from invented_layers import ATTRIBUTES, invented_layers
 from gridcool.grid import Bounds, Grid
 from gridcool.products import maps
 from gridcool.products.cartography import Surroundings, coastline, projection
+from gridcool.products.geotiff import TILE, gdal_environment
 from gridcool.products.layers import write_layers
 from gridcool.products.maps import draw_maps
 from gridcool.products.ramps import MISSING, paler, ramp
@@ -208,3 +209,9 @@ def test_a_layer_that_is_not_there(tmp_path: Path) -> None:
     folder = product(tmp_path, COUNTRY)
     with pytest.raises(ValueError, match="not among"):
         draw_maps(folder, COUNTRY, {"tilt": layer_variables()["tilt"]}, Surroundings())
+
+
+def test_the_block_cache_holds_many_tiles() -> None:
+    """The option counts bytes, not GDAL's own megabytes; too small, each row unpacks its tile."""
+    tile = 4 * TILE**2
+    assert 100 * tile < gdal_environment().options["GDAL_CACHEMAX"] < 2**30

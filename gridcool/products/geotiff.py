@@ -31,7 +31,7 @@ from gridcool.products.ramps import MISSING, class_colours
 from gridcool.products.statistics import BandStatistics, RowStatistics
 from gridcool.variables import LayerVariable
 
-CACHE_MEGABYTES = 256  # GDAL's block cache; its own default is a share of the machine's memory
+CACHE_BYTES = 256 * 2**20  # GDAL's block cache; its own default is a share of the machine's memory
 TILE = 512
 EPSG = 4326
 LAYER_FOLDER = "layers"
@@ -49,7 +49,7 @@ GDAL_ERRORS = (OSError, RasterioError, CPLE_BaseError)
 
 def gdal_environment() -> Any:
     """GDAL with a bounded block cache."""
-    return rasterio.Env(GDAL_CACHEMAX=CACHE_MEGABYTES)
+    return rasterio.Env(GDAL_CACHEMAX=CACHE_BYTES)  # GDAL's variable counts megabytes, this bytes
 
 
 def band_names(layer: LayerVariable) -> tuple[str, ...]:
